@@ -43,14 +43,18 @@ CHEMISTRIES: dict[Chemistry, ChemistryFacts] = {
         "LiFePO4", 3.2, 13.3 / 4, 13.5 / 4, 14.4 / 4, 14.6 / 4, 0.0, False, ((12, 4), (24, 8), (36, 12), (48, 16))
     ),
     "li_ion": ChemistryFacts(
-        "Li-ion (NMC)", 3.7, 3.85, 3.95, 4.2, 4.2, 0.0, False, ((3.7, 1), (7.4, 2), (12, 3), (24, 7), (36, 10), (48, 13))
+        "Li-ion (NMC)",
+        3.7,
+        3.85,
+        3.95,
+        4.2,
+        4.2,
+        0.0,
+        False,
+        ((3.7, 1), (7.4, 2), (12, 3), (24, 7), (36, 10), (48, 13)),
     ),
-    "nicd": ChemistryFacts(
-        "NiCd", 1.2, 1.29, 1.41, 1.5, 1.65, -0.003, False, ((12, 10), (24, 20), (48, 40))
-    ),
-    "nimh": ChemistryFacts(
-        "NiMH", 1.2, 1.29, 1.38, 1.43, 1.45, -0.003, False, ((12, 10), (24, 20), (48, 40))
-    ),
+    "nicd": ChemistryFacts("NiCd", 1.2, 1.29, 1.41, 1.5, 1.65, -0.003, False, ((12, 10), (24, 20), (48, 40))),
+    "nimh": ChemistryFacts("NiMH", 1.2, 1.29, 1.38, 1.43, 1.45, -0.003, False, ((12, 10), (24, 20), (48, 40))),
 }
 
 
@@ -65,7 +69,7 @@ class Bank:
 
     chemistry: Chemistry
     nominal_v: float
-    capacity_ah: float
+    capacity_ah: float | None = None
     night_v: float | None = None
     day_v: float | None = None
     absorption_v: float | None = None
@@ -78,7 +82,7 @@ class Bank:
             raise InputError("chemistry", f"{self.chemistry!r} is not one of {', '.join(CHEMISTRIES)}")
         for field, value, low, high, unit in (
             ("battery_nominal_v", self.nominal_v, 1.2, 1000.0, "V"),
-            ("battery_ah", self.capacity_ah, 0.001, 1e6, "Ah"),
+            ("battery_ah", 1.0 if self.capacity_ah is None else self.capacity_ah, 0.001, 1e6, "Ah"),
             ("battery_internal_ohm", self.internal_ohm, 0.0, 100.0, "ohm"),
         ):
             if not low <= value <= high:

@@ -16,8 +16,8 @@ T0_K = 298.15  # all laws are anchored at 25 °C
 
 # Below this reverse voltage the leakage power law is rounded off, so that it leaves 0 V with no slope of its own.
 LEAKAGE_ROUNDING_V = 0.1
-# The forward saturation current may supply at most this share of the leakage at the reference voltage.
-MAX_SATURATION_SHARE = 0.5
+# In reverse the saturation current supplies no more of the leakage than the voltage law gives at this voltage.
+SATURATED_BELOW_V = 1.0
 # Current at which a regulated active rectifier has built up half its regulated drop.
 ACTIVE_KNEE_A = 1e-3
 
@@ -39,10 +39,10 @@ class JunctionLaw:
 
     Forward:  I = Is(T)·(exp(v/nVt) − 1), with `series_ohm` outside the junction;
               Is(T) = Is·(T/T0)^(X/n)·exp(−φ/(n·k)·(1/T − 1/T0)).
-    Reverse:  I = −[Is(T)·(1 − exp(−u/nVt)) + (IR(T) − Is(T))·q(u)], u = −v, where q is a power of u that is 1 at
-              `leakage_ref_v` and leaves 0 V flat, and IR(T) follows Arrhenius. Both branches have the slope Is/nVt at
-              0 V, so the current is smooth and monotone through zero. Where the forward fit asks for an Is above half
-              of IR (the two come from different measurements), its share in reverse is held at half.
+    Reverse:  I = −[S·(1 − exp(−u/w)) + (IR(T) − S)·q(u)], u = −v, where q is a power of u that is 1 at `leakage_ref_v`
+              and leaves 0 V flat, and IR(T) follows Arrhenius. S is Is(T), but no more than IR·q(1 V): the forward fit
+              may ask for a larger Is than the part leaks, for the two come from different measurements. The width
+              w = nVt·S/Is gives both branches the slope Is/nVt at 0 V: the current is smooth and monotone through zero.
 
     Source:   thermionic emission and Shockley diffusion share this form (Sze, Physics of Semiconductor Devices, from
               memory); X = 2 for a Schottky barrier (A*T²), 3 for a pn junction.
@@ -237,16 +237,37 @@ def reverse_a_and_slope(
     cells: DiodeCells, reverse_v: FloatArray, junction_c: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
     """Leakage magnitude, and its slope with `reverse_v`, in A and A/V. Shapes broadcast with [D]."""
-    u = np.asarray(reverse_v, dtype=np.float64)
-    leakage = cells.leakage_a * arrhenius_ratio(junction_c, cells.leakage_ev)
-    shape, shape_slope = leakage_shape(u, cells.leakage_ref_v, cells.leakage_exponent)
-    is_junction = ~cells.active & ~cells.ideal
-    share_a = np.where(is_junction, np.minimum(saturation_a(cells, junction_c), MAX_SATURATION_SHARE * leakage), 0.0)
-    n_vt = cells.ideality * thermal_voltage_v(junction_c)
-    decay = np.exp(-np.minimum(u / n_vt, 700.0))
-    total = share_a * (1.0 - decay) + (leakage - share_a) * shape
-    slope = share_a / n_vt * decay + (leakage - share_a) * shape_slope
-    return np.asarray(total), np.asarray(slope)
+    law = ReverseLaw.at(cells, junction_c)
+    return law.current_and_slope(np.asarray(reverse_v, dtype=np.float64))
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class ReverseLaw:
+    """Leakage at one temperature per cell, its temperature factors worked out once for many voltages."""
+
+    saturated_a: FloatArray
+    width_v: FloatArray
+    rest_a: FloatArray
+    ref_v: FloatArray
+    exponent: FloatArray
+
+    @classmethod
+    def at(cls, cells: DiodeCells, junction_c: FloatArray) -> "ReverseLaw":
+        """The laws of `cells` at `junction_c`; shapes broadcast."""
+        leakage = cells.leakage_a * arrhenius_ratio(junction_c, cells.leakage_ev)
+        most, _ = leakage_shape(np.array(SATURATED_BELOW_V), cells.leakage_ref_v, cells.leakage_exponent)
+        is_a = saturation_a(cells, junction_c)
+        saturated = np.where(cells.active | cells.ideal, 0.0, np.minimum(is_a, np.minimum(most, 0.5) * leakage))
+        width = cells.ideality * thermal_voltage_v(junction_c) * np.where(saturated > 0, saturated / is_a, 1.0)
+        width = np.maximum(width, 1e-12)
+        return cls(saturated, width, leakage - saturated, cells.leakage_ref_v, cells.leakage_exponent)
+
+    def current_and_slope(self, u: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """Leakage magnitude at reverse voltage `u`, and its slope."""
+        shape, shape_slope = leakage_shape(u, self.ref_v, self.exponent)
+        decay = np.exp(-np.minimum(u / self.width_v, 700.0))
+        total = self.saturated_a * (1.0 - decay) + self.rest_a * shape
+        return total, self.saturated_a / self.width_v * decay + self.rest_a * shape_slope
 
 
 def forward_drop_v(cells: DiodeCells, current_a: FloatArray, junction_c: FloatArray) -> FloatArray:

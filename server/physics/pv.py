@@ -16,14 +16,14 @@ BOLTZMANN_EV_PER_K = 8.617333262e-5  # CODATA 2018, k/q
 ZERO_C_K = 273.15
 T_STC_K = 298.15
 
-# Band gap of silicon and its slope, as De Soto, Klein and Beckman, Solar Energy 80 (2006) 78-88, give them (from memory).
+# Band gap of silicon and its slope as De Soto, Klein and Beckman give them, Solar Energy 80 (2006) 78-88 (from memory).
 EG_EV = 1.121
 EG_PER_K = -0.0002677
 
 # Exponential law between the dark and the lit shunt: exponent per 1000 W/m2, Mermoud and Lejeune, 25th EU PVSEC (2010),
 # from memory.
 SHUNT_EXPONENT = 5.5
-# An estimate, not a measurement: dark shunt of crystalline cells, ohm·cm2 of cell, for a low, middle and high dark current.
+# An estimate, not a measurement: dark shunt of crystalline cells, ohm·cm2 of cell, by how much dark current they take.
 DARK_SHUNT_OHM_CM2 = {"low": 20_000.0, "middle": 5_000.0, "high": 1_000.0}
 CELL_ISC_A_PER_CM2 = 0.038  # area from Isc, common practice for crystalline silicon
 
@@ -166,11 +166,11 @@ class LabelFit:
 def fit_label(label: ModuleLabel) -> LabelFit:
     """De Soto parameters that reproduce the label best.
 
-    pvlib's iterative fit converges from its own start for few labels only, so the explicit estimate of Batzelis seeds it;
-    solvers are tried in turn and the physical answer with the least misfit is kept.
+    pvlib's iterative fit converges from its own start for few labels only, so the explicit estimate of Batzelis seeds
+    it; solvers are tried in turn and the physical answer with the least misfit is kept.
 
     Raises:  InputError naming the field missed most, where the best misfit exceeds 2 %.
-    Source:  De Soto et al., Solar Energy 80 (2006); Batzelis, IEEE Trans. Sustainable Energy 8 (2017); both from memory.
+    Source:  De Soto et al., Solar Energy 80 (2006); Batzelis, IEEE Trans. Sustain. Energy 8 (2017); both from memory.
     """
     sdm = pvlib_module("ivtools.sdm")
     isc_per_k = label.isc_coefficient_pct_per_c / 100.0 * label.isc_a
@@ -293,7 +293,7 @@ class StringSpec:
         return dark_shunt_ohm(self.cells_per_module, self.isc_a, band)
 
     def dark_shunt_from_reading_ohm(self, reading_a: float, terminal_v: float, cell_c: float) -> tuple[float, bool]:
-        """Dark shunt of one module that makes the unlit string take `reading_a` at `terminal_v`, and whether one exists.
+        """Dark shunt of one module that makes the unlit string take `reading_a` at `terminal_v`; whether one exists.
 
         Where the cells' own junctions already take more than the reading, the shunt is set out of the way (1e12 ohm)
         and the second value is False.

@@ -77,14 +77,15 @@ def forward_heat(
 ) -> tuple[FloatArray, FloatArray]:
     """Junction temperature and drop under a continuous forward current. Shapes broadcast with [D].
 
-    The drop falls as the junction warms, so the fixed point is approached from above by Newton and is unique.
+    The drop falls as the junction warms, so the fixed point is approached from above by Newton and is unique. It is
+    cut off at 400 °C, where no law holds any more.
     """
     t_c = np.asarray(box_c + 0.0 * current_a * rth_c_per_w, dtype=np.float64)
     for _ in range(60):
         drop = dio.forward_drop_v(diodes, current_a, t_c)
         slope = (dio.forward_drop_v(diodes, current_a, t_c + 0.5) - drop) / 0.5
         off = box_c + rth_c_per_w * current_a * drop - t_c
-        t_c = np.minimum(t_c + off / np.maximum(1.0 - rth_c_per_w * current_a * slope, 0.2), 2000.0)
+        t_c = np.minimum(t_c + off / np.maximum(1.0 - rth_c_per_w * current_a * slope, 0.2), 400.0)
         if np.all(np.abs(off) < 1e-6):
             break
     return t_c, dio.forward_drop_v(diodes, current_a, t_c)
@@ -148,42 +149,40 @@ class ReverseBalance:
 
 
 def reverse_balance(
-    diodes: DiodeCells, reverse_v: float, ambient_c: float, rth_c_per_w: FloatArray
+    diodes: DiodeCells, reverse_v: FloatArray | float, ambient_c: float, rth_c_per_w: FloatArray
 ) -> ReverseBalance:
     """Equilibria of T = ambient + Rth·VR·IR(T), the bank holding the full reverse voltage.
 
     With g(T) = T − Rth·VR·IR(T) an ambient has an equilibrium where g crosses it: rising, it is stable; falling, it is
     the tipping point; and the top of g is the critical ambient. g rises, then falls, once each.
 
-    Shapes:  rth_c_per_w [D].
+    Shapes:  rth_c_per_w [D], reverse_v [D] or scalar.
     """
-    grid = np.linspace(-60.0, 400.0, 921)[:, None]
+    grid = np.linspace(-60.0, 400.0, 116)[:, None]
+    volts = np.asarray(reverse_v, dtype=np.float64)
 
     def level(t_c: FloatArray) -> FloatArray:
-        volts = np.full((1, 1), reverse_v)
-        return np.asarray(t_c - rth_c_per_w * reverse_v * dio.reverse_a(diodes, volts, t_c))
+        return np.asarray(t_c - rth_c_per_w * volts * dio.reverse_a(diodes, volts, t_c))
 
     g = level(grid)
     top = np.argmax(g, axis=0)
-    low = grid[np.maximum(top - 1, 0), 0]
-    high = grid[np.minimum(top + 1, len(grid) - 1), 0]
-    for _ in range(60):  # golden-section is not worth its code: g is unimodal, so thirds will do
+    low, high = grid[np.maximum(top - 1, 0), 0], grid[np.minimum(top + 1, len(grid) - 1), 0]
+    for _ in range(44):  # g is unimodal, so thirds will do: 8 K shrink to 1e-7 K
         a, b = low + (high - low) / 3, high - (high - low) / 3
-        up = level(a[None])[0] < level(b[None])[0]
+        up = level(a) < level(b)
         low, high = np.where(up, a, low), np.where(up, high, b)
     peak_c = 0.5 * (low + high)
-    critical = level(peak_c[None])[0]
+    critical = level(peak_c)
     exists = critical >= ambient_c
     # Stable: between ambient and the peak. Tipping: beyond the peak.
     s_low, s_high = np.full_like(peak_c, ambient_c), np.maximum(peak_c, ambient_c)
     t_low, t_high = peak_c.copy(), np.full_like(peak_c, 400.0)
-    for _ in range(60):
+    never = level(t_high) > ambient_c
+    for _ in range(36):
         s_mid, t_mid = 0.5 * (s_low + s_high), 0.5 * (t_low + t_high)
-        below = level(s_mid[None])[0] < ambient_c
+        below, above = level(s_mid) < ambient_c, level(t_mid) > ambient_c
         s_low, s_high = np.where(below, s_mid, s_low), np.where(below, s_high, s_mid)
-        above = level(t_mid[None])[0] > ambient_c
         t_low, t_high = np.where(above, t_mid, t_low), np.where(above, t_high, t_mid)
-    never = level(np.full((1, len(peak_c)), 400.0))[0] > ambient_c
     return ReverseBalance(
         np.where(exists, 0.5 * (s_low + s_high), np.nan),
         np.where(exists & ~never, 0.5 * (t_low + t_high), np.nan),

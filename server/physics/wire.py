@@ -7,8 +7,8 @@ from server.errors import InputError
 
 Conductor = Literal["copper", "aluminium"]
 
-# Resistivity at 20 °C, ohm·mm2/m, and its coefficient per °C at 20 °C. Copper: IEC 60228 / 60287 figures; aluminium: IEC
-# 60889 hard-drawn wire, from memory.
+# Resistivity at 20 °C, ohm·mm2/m, and its coefficient per °C at 20 °C. Copper: IEC 60228 / 60287 figures; aluminium:
+# IEC 60889 hard-drawn wire, from memory.
 RESISTIVITY: dict[Conductor, tuple[float, float]] = {"copper": (0.017241, 0.00393), "aluminium": (0.028264, 0.00403)}
 
 # Stranded uncoated copper at 75 °C, ohm per km: NEC 2017, Chapter 9, Table 8.
@@ -32,7 +32,7 @@ TABLE_C = 75.0
 
 
 def awg_area_mm2(awg: str) -> float:
-    """Cross-section of an American wire gauge, "18" to "4/0". Source: diameters as ASTM B258 defines them (from memory).
+    """Cross-section of an American wire gauge, "30" to "4/0". Source: diameters as in ASTM B258 (from memory).
 
     Raises:  InputError for anything else.
     """
@@ -43,7 +43,7 @@ def awg_area_mm2(awg: str) -> float:
         raise InputError("cable_awg", f"{awg!r} is not a wire gauge; write 24 to 1, or 1/0 to 4/0") from None
     if not -3 <= number <= 30:
         raise InputError("cable_awg", f"{awg!r} is outside 30 to 4/0")
-    diameter_mm = 0.127 * 92 ** ((36 - number) / 39)
+    diameter_mm = 0.127 * float(92 ** ((36 - number) / 39))
     return math.pi / 4 * diameter_mm**2
 
 
@@ -55,7 +55,7 @@ def wire_ohm(length_m: float, area_mm2: float, temp_c: float = 20.0, conductor: 
 
 def awg_ohm_per_km(awg: str, temp_c: float = 75.0, conductor: Conductor = "copper") -> float:
     """Stranded wire by gauge: for copper from the table where it lists the gauge, else metal with the strands' lay."""
-    rho, alpha = RESISTIVITY[conductor]
+    _, alpha = RESISTIVITY[conductor]
     key = awg.strip()
     if conductor == "copper" and key in NEC_TABLE_8_OHM_PER_KM:
         at_75 = NEC_TABLE_8_OHM_PER_KM[key]

@@ -6,11 +6,12 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
+from server.catalog.corners import raised_maximum
 from server.catalog.datasheet import load_types
 from server.catalog.part import tab_live
 from server.catalog.parts import fit_type, load_parts, part, unfitted
 from server.errors import InputError
-from server.physics.diode import DiodeCells, current_a, forward_drop_v, reverse_a
+from server.physics.diode import DiodeCells, JunctionLaw, current_a, forward_drop_v, reverse_a
 
 PARTS = load_parts()
 JUNCTIONS = [item for item in PARTS if item.technology != "active"]
@@ -60,7 +61,15 @@ def test_a_printed_typical_leakage_is_kept_and_the_maximum_gives_way():
     item = part("SBR30A45CT")
     ours_a = reverse_a(cells(item), np.array(45.0), np.array([[25.0], [125.0]]))[:, 0]
     assert ours_a == pytest.approx([0.26e-3, 65e-3], rel=0.01)
-    assert "maximum_leakage_raised" in {remark.code for remark in item.warnings}
+
+
+def test_a_flat_printed_typical_lifts_the_maximum_below_its_rating_only():
+    typical = JunctionLaw(1e-6, 1.05, 0.67, 2.0, 0.01, 0.0, 0.26e-3, 45.0, 0.2, 0.6)
+    maximum = JunctionLaw(1e-6, 1.05, 0.67, 2.0, 0.01, 0.0, 0.30e-3, 45.0, 0.7, 0.6)
+    raised = raised_maximum(typical, maximum, 45.0)
+    at_5_v, at_45_v = (reverse_a(DiodeCells.of([typical, maximum, raised]), np.array(v), np.array(25.0)) for v in (5, 45))
+    assert at_5_v[1] < at_5_v[0] <= at_5_v[2]
+    assert at_45_v[2] == pytest.approx(0.30e-3)
 
 
 def test_a_maximum_printed_at_one_voltage_never_falls_faster_than_the_class():
