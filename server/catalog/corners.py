@@ -9,8 +9,8 @@ from server.catalog.reverse import heat_exponent
 from server.errors import InputError
 from server.physics.diode import DiodeCells, JunctionLaw, reverse_a
 
-COLD_C, HOTTEST_C = 0.0, 125.0
-SAMPLE_C = np.linspace(COLD_C, HOTTEST_C, 26)
+COLD_C, HOTTEST_C = -25.0, 125.0
+SAMPLE_C = np.linspace(COLD_C, HOTTEST_C, 31)
 LEAST_A = 1e-9  # a leakage below this decides nothing: 1 mAh in a century
 CROSSING_LIMIT_V = 0.1  # columns of one sheet may cross by this much, by rounding, pulse heating and extrapolation
 LOWEST_V = 5.0  # below this a bank does not charge
@@ -73,7 +73,7 @@ def limited_reverse(typical: JunctionLaw, maximum: JunctionLaw, vrrm_v: float) -
         over = np.max(np.log(reverse_a(DiodeCells.of([law]), volts, SAMPLE_C)) - ceiling, axis=0)
         if np.max(over) <= 1e-9:
             break
-        for end, side in ((0, over[:13]), (1, over[13:])):
+        for end, side in ((0, over[: len(over) // 2]), (1, over[len(over) // 2 :])):
             worst = float(np.max(side))
             if worst > 1e-9:
                 ends[end] -= worst + 1e-6

@@ -23,8 +23,8 @@ from server.physics.loop_blocks import (
     warmth,
 )
 
-# One Newton step smaller than this, in units of nVt, leaves an error of half its square: 5e-13 of the current.
-LAST_STEP = 1e-6
+# A Newton step of x, in units of nVt, leaves half of x² of e = I + Is for the next one: enough at this share of I.
+LAST_STEP_SHARE = 1e-12
 # A block whose last step is below this everywhere, with currents well above it, needs no closer look.
 QUICK_STEP_A, QUICK_LEAST_A = 2e-11, 1e-4
 TINY_A = 1e-15  # a start that still has a logarithm
@@ -243,7 +243,7 @@ def _descend(
         step = np.minimum(np.maximum(_step_down(flat, v, e), v - top_v), v)
         v = v - step
         x = step / n_vt
-        done = np.abs(x) < LAST_STEP
+        done = x * x * e < LAST_STEP_SHARE * (np.abs(e - is_a) + 1e-6)
         e = np.where(done, e * (1.0 - x + 0.5 * x * x), is_a * np.exp(v / n_vt))
         current_a[left], diode_v[left] = e - is_a, v
         keep = ~done

@@ -187,6 +187,16 @@ RULES: Sequence[tuple[str, str, str, Say]] = (
             "its maker about a shorted panel, and check its absolute maximum voltage against the coldest string.",
         ),
     ),
+    (
+        "fed_fault",
+        "Without a diode the bank feeds a fault",
+        "arithmetic",
+        _when(
+            lambda s: not s.fits_part and s.job.charge.blocks_at_night != "yes",
+            "A chafed cable or a shorted module is then fed by the bank. The fuse at the battery is what protects the cable; "
+            "a diode at the battery's end would keep the bank out of a short on the roof run.",
+        ),
+    ),
     ("string_fuse", "String fuses", "NEN 1010:2020 712.431.4, as explained by a trade page, read", _string_fuse),
     (
         "live_tab",

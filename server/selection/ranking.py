@@ -9,6 +9,7 @@ from server.selection.result import Candidate, DarkBand, SiteFacts, Standing, Ve
 # Differences below this share of the deciding period's harvest are no difference: they lie under what is knowable of a
 # site, and the cooler part is the better one.
 RESOLUTION_FRAC = 0.002
+NEAR_KNEE_FRAC = 0.3  # above this share of the heat lost to the bank, the words change
 _CLASS: dict[Standing, int] = {"pass": 0, "marginal": 1, "confirm": 2, "fail": 3, "reference": 4}
 NONE_KEY, VALVE_KEY = "none", "perfect-valve"
 
@@ -38,22 +39,23 @@ def order(entries: Sequence[Entry], resolution_wh: float) -> tuple[list[str], se
     """Keys from best to worst, and those within the resolution of the best of their standing.
 
     First those that pass all checks, then the marginal ones, then those that a maker must confirm; what fails and the
-    reference are left out. Within a standing the greatest net energy leads; among equals the coolest does.
+    reference are left out. Within a standing the greatest net energy leads; those within the resolution of the leader
+    are its equals, and the coolest of them comes first; then the same again with the rest.
     """
     keys: list[str] = []
     tied: set[str] = set()
     for standing in ("pass", "marginal", "confirm"):
-        group = [entry for entry in entries if entry.standing == standing]
-        if not group:
-            continue
-        best = max(entry.net_wh for entry in group)
-        near = [entry for entry in group if best - entry.net_wh <= resolution_wh]
-        far = [entry for entry in group if best - entry.net_wh > resolution_wh]
-        near.sort(key=lambda entry: (entry.heat_wh, -entry.net_wh, entry.key))
-        far.sort(key=lambda entry: (-entry.net_wh, entry.heat_wh, entry.key))
-        if len(near) > 1:
-            tied.update(entry.key for entry in near)
-        keys += [entry.key for entry in near + far]
+        rest = [entry for entry in entries if entry.standing == standing]
+        first = True
+        while rest:
+            best = max(entry.net_wh for entry in rest)
+            equals = [entry for entry in rest if best - entry.net_wh <= resolution_wh]
+            equals.sort(key=lambda entry: (entry.heat_wh, -entry.net_wh, entry.key))
+            rest = [entry for entry in rest if best - entry.net_wh > resolution_wh]
+            if first and len(equals) > 1:
+                tied.update(entry.key for entry in equals)
+            first = False
+            keys += [entry.key for entry in equals]
     return keys, tied
 
 
@@ -192,16 +194,7 @@ def _because(job: Job, facts: SiteFacts, best: Candidate, runner: Candidate | No
     month = when(facts)
     harvest = best.typical.delivered_wh[period]
     lines = []
-    if job.charge.controller == "mppt":
-        lines.append("behind a converter nearly all of a diode's heat is lost to the bank")
-    else:
-        lines.append(
-            f"the string works on the flat part of its curve: of {best.typical.heat_wh[period]:.1f} Wh of heat a day "
-            "the bank "
-            f"misses only {max(best.typical.day_loss_wh[period], 0.0):.1f} Wh"
-            if best.key not in (NONE_KEY,)
-            else "the string works on the flat part of its curve, where a drop costs little, and drains little by night"
-        )
+    lines += _ledgers_in_words(job, best, period)
     if runner is not None:
         gap = best.typical.net_wh[period] - runner.typical.net_wh[period]
         share = 100 * gap / harvest if harvest > 0 else 0.0
@@ -221,6 +214,19 @@ def _because(job: Job, facts: SiteFacts, best: Candidate, runner: Candidate | No
         watts = facts.array_w * best.typical.day_loss_wh[period] / harvest
         lines.append(f"its drop costs as much as {watts:.1f} W of panel")
     return tuple(lines)
+
+
+def _ledgers_in_words(job: Job, best: Candidate, period: int) -> list[str]:
+    """What the drop does here: heat is one thing, what the bank misses another."""
+    if best.key == NONE_KEY:
+        return []
+    heat_wh, loss_wh = best.typical.heat_wh[period], max(best.typical.day_loss_wh[period], 0.0)
+    pair = f"of {heat_wh:.1f} Wh of heat a day the bank misses {loss_wh:.1f} Wh"
+    if job.charge.controller == "mppt":
+        return [f"behind a converter nearly all of a diode's heat is lost to the bank: {pair}"]
+    if loss_wh < NEAR_KNEE_FRAC * heat_wh:
+        return [f"the string works on the flat part of its curve, where a drop costs little: {pair}"]
+    return [f"the bank sits near the knee of the string's curve, where a drop costs current: {pair}"]
 
 
 def _standing_words(item: Candidate) -> str:

@@ -67,7 +67,9 @@ def test_a_flat_printed_typical_lifts_the_maximum_below_its_rating_only():
     typical = JunctionLaw(1e-6, 1.05, 0.67, 2.0, 0.01, 0.0, 0.26e-3, 45.0, 0.2, 0.6)
     maximum = JunctionLaw(1e-6, 1.05, 0.67, 2.0, 0.01, 0.0, 0.30e-3, 45.0, 0.7, 0.6)
     raised = raised_maximum(typical, maximum, 45.0)
-    at_5_v, at_45_v = (reverse_a(DiodeCells.of([typical, maximum, raised]), np.array(v), np.array(25.0)) for v in (5, 45))
+    at_5_v, at_45_v = (
+        reverse_a(DiodeCells.of([typical, maximum, raised]), np.array(v), np.array(25.0)) for v in (5, 45)
+    )
     assert at_5_v[1] < at_5_v[0] <= at_5_v[2]
     assert at_45_v[2] == pytest.approx(0.30e-3)
 

@@ -35,7 +35,9 @@ def test_both_branches_leave_zero_with_one_slope(law, junction_c):
 
 def test_leakage_is_the_stated_one_at_its_stated_point():
     for junction_c, expected in ((25.0, 8e-5), (100.0, 8e-5 * dio.arrhenius_ratio(100.0, 0.6))):
-        assert dio.reverse_a(DiodeCells.of([SCHOTTKY]), np.array(45.0), np.array(junction_c))[0] == pytest.approx(expected)
+        assert dio.reverse_a(DiodeCells.of([SCHOTTKY]), np.array(45.0), np.array(junction_c))[0] == pytest.approx(
+            expected
+        )
 
 
 def test_forward_drop_inverts_the_current_law():

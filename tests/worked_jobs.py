@@ -7,7 +7,9 @@ def _points(*points: tuple[float, float]) -> list[dict[str, Any]]:
     return [{"current_a": a, "voltage_v": v, "junction_c": 25.0, "kind": "typ"} for a, v in points]
 
 
-def _leak(vrrm_v: float, cold_ma: tuple[float, float], hot_ma: tuple[float, float], hot_c: float) -> list[dict[str, Any]]:
+def _leak(
+    vrrm_v: float, cold_ma: tuple[float, float], hot_ma: tuple[float, float], hot_c: float
+) -> list[dict[str, Any]]:
     rows = []
     for junction_c, pair in ((25.0, cold_ma), (hot_c, hot_ma)):
         for kind, value in zip(("typ", "max"), pair, strict=True):
@@ -40,28 +42,67 @@ def _class(
 # Class parameters: forward drop at 25 °C, its slope, leakage at VRRM typical and maximum, cold and hot.
 CLASSES: dict[str, dict[str, Any]] = {
     "S45": _class(
-        "S45", "schottky", 45, _points((1, 0.34), (15, 0.52)), -1.0, _leak(45, (0.08, 0.5), (8, 50), 100),
-        tj_max_c=125, rth_ja_c_per_w=28,
+        "S45",
+        "schottky",
+        45,
+        _points((1, 0.34), (15, 0.52)),
+        -1.0,
+        _leak(45, (0.08, 0.5), (8, 50), 100),
+        tj_max_c=125,
+        rth_ja_c_per_w=28,
     ),
     "S60": _class(
-        "S60", "schottky", 60, _points((1, 0.42), (10, 0.62)), -1.2, _leak(60, (0.03, 0.3), (4, 25), 100),
-        tj_max_c=150, rth_ja_c_per_w=28,
+        "S60",
+        "schottky",
+        60,
+        _points((1, 0.42), (10, 0.62)),
+        -1.2,
+        _leak(60, (0.03, 0.3), (4, 25), 100),
+        tj_max_c=150,
+        rth_ja_c_per_w=28,
     ),
     "S100": _class(
-        "S100", "schottky", 100, _points((2, 0.56), (20, 0.82)), -1.4, _leak(100, (0.006, 0.2), (2, 12), 125),
-        tj_max_c=150, rth_jc_c_per_w=1.5, tab_live=True,
+        "S100",
+        "schottky",
+        100,
+        _points((2, 0.56), (20, 0.82)),
+        -1.4,
+        _leak(100, (0.006, 0.2), (2, 12), 125),
+        tj_max_c=150,
+        rth_jc_c_per_w=1.5,
+        tab_live=True,
     ),
     "S200": _class(
-        "S200", "schottky", 200, _points((2, 0.66), (20, 0.90)), -1.5, _leak(200, (0.004, 0.1), (2, 20), 125),
-        tj_max_c=150, rth_jc_c_per_w=1.5, tab_live=True,
+        "S200",
+        "schottky",
+        200,
+        _points((2, 0.66), (20, 0.90)),
+        -1.5,
+        _leak(200, (0.004, 0.1), (2, 20), 125),
+        tj_max_c=150,
+        rth_jc_c_per_w=1.5,
+        tab_live=True,
     ),
     "PN10": _class(
-        "PN10", "pn_silicon", 1000, _points((1, 0.74), (10, 0.95)), -1.7, _leak(1000, (1e-4, 0.01), (0.02, 0.1), 100),
-        tj_max_c=175, rth_ja_c_per_w=15,
+        "PN10",
+        "pn_silicon",
+        1000,
+        _points((1, 0.74), (10, 0.95)),
+        -1.7,
+        _leak(1000, (1e-4, 0.01), (0.02, 0.1), 100),
+        tj_max_c=175,
+        rth_ja_c_per_w=15,
     ),
     "PN35": _class(
-        "PN35", "pn_silicon", 1000, _points((1, 0.72), (17.5, 1.00)), -1.7, _leak(1000, (2e-4, 0.01), (0.05, 0.2), 100),
-        tj_max_c=150, rth_jc_c_per_w=1.5, tab_live=False,
+        "PN35",
+        "pn_silicon",
+        1000,
+        _points((1, 0.72), (17.5, 1.00)),
+        -1.7,
+        _leak(1000, (2e-4, 0.01), (0.05, 0.2), 100),
+        tj_max_c=150,
+        rth_jc_c_per_w=1.5,
+        tab_live=False,
     ),
     "ID": {
         "name": "ID",
