@@ -13,8 +13,8 @@ BoolArray = NDArray[np.bool_]
 IndexArray = NDArray[np.intp]
 
 # Large enough that Python's cost per block is small, small enough for a core's cache.
-BLOCK_CELLS = 32_768
-MAX_BLOCK_COLUMNS = 8  # so that the next block's start is never far
+BLOCK_CELLS = 40_960
+MAX_BLOCK_COLUMNS = 10  # so that the next block's start is never far
 MAX_STEPS = 80
 MAX_TEMPERATURE_PASSES = 40
 CURRENT_ATOL_A = 1e-10

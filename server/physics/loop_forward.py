@@ -11,6 +11,7 @@ from server.physics.loop_blocks import (
     CURRENT_ATOL_A,
     CURRENT_RTOL,
     DESTROYED_C,
+    MAX_BLOCK_COLUMNS,
     MAX_STEPS,
     MAX_TEMPERATURE_PASSES,
     BoolArray,
@@ -35,18 +36,25 @@ def forward_solver(field: Field) -> Solver:
     string_ohm = field.string.series_ohm
     heats = bool(np.any(field.rth > 0))
     if not heats and np.ptp(field.box_c) == 0.0 and np.ptp(string_ohm) == 0.0:
-        return partial(forward_block, uniform=_ForwardLaw.at(field, field.box_c[:1]))
+        desk = _Desk.of((min(MAX_BLOCK_COLUMNS, field.shape[0]), field.shape[1]))
+        return partial(forward_block, uniform=_ForwardLaw.at(field, field.box_c[:1]), desk=desk)
     return forward_block
 
 
-def forward_block(field: Field, before: FloatArray | None, part: slice, uniform: "_ForwardLaw | None" = None) -> Solved:
+def forward_block(
+    field: Field,
+    before: FloatArray | None,
+    part: slice,
+    uniform: "_ForwardLaw | None" = None,
+    desk: "_Desk | None" = None,
+) -> Solved:
     """Junction diodes under forward current, their temperature settled with it.
 
     `uniform` is the law of all columns where one temperature serves all rows.
     """
     start_a = field.offered_a if before is None else np.minimum(np.maximum(before, TINY_A), field.offered_a)
     if uniform is not None:
-        current_a, diode_v, doubt = uniform.columns(part).two_steps(field, start_a)
+        current_a, diode_v, doubt = uniform.columns(part).two_steps(field, start_a, desk)
         return current_a, diode_v, None, None, None if doubt is None else ~doubt  # `mend` settles the rest at once
     field = field.columns(part)
     if not np.any(field.rth > 0):
@@ -143,22 +151,29 @@ class _ForwardLaw:
             values.reshape(-1)[left] = mended
         return current_a, diode_v, settled
 
-    def two_steps(self, field: Field, start_a: FloatArray) -> tuple[FloatArray, FloatArray, BoolArray | None]:
-        """Newton, then a chord, in e = I + Is; with the cells whose remaining error may exceed the tolerance.
+    def two_steps(
+        self, field: Field, start_a: FloatArray, desk: "_Desk | None" = None
+    ) -> tuple[FloatArray, FloatArray, BoolArray | None]:
+        """Newton, then a chord, in e = I + Is; with the cells whose remaining imbalance may exceed the tolerance.
 
         The string's exponential at bank voltage is taken out once per row, which leaves the two drops,
-        R·I + nVt·ln(e/Is), for its exponent. Written in place: on a block this size each pass over memory counts.
+        R·I + nVt·ln(e/Is), for its exponent. What is returned may lie on the desk, until its next use.
         """
+        shape = (len(self.n_vt), len(field.bank_v))
+        desk = _Desk.of(shape) if desk is None else desk.cut(len(self.n_vt))
         with np.errstate(over="ignore", invalid="ignore"):  # what overflows is in doubt, and goes the other way
-            return self._two_steps(field, start_a)
+            return self._two_steps(field, start_a, desk)
 
-    def _two_steps(self, field: Field, start_a: FloatArray) -> tuple[FloatArray, FloatArray, BoolArray | None]:
+    def _two_steps(
+        self, field: Field, start_a: FloatArray, desk: "_Desk"
+    ) -> tuple[FloatArray, FloatArray, BoolArray | None]:
         n_vt, is_a, ohm, shunt_s = self.n_vt, self.is_a, self.ohm, field.string.shunt_s
+        drop, string_s, slope, e, current_a, diode_v, spare = desk
         # Newton from e = start.
-        drop = n_vt * np.log(start_a)
-        drop += ohm * start_a
+        np.multiply(n_vt, np.log(start_a), out=drop)
+        drop += np.multiply(ohm, start_a, out=spare)
         drop -= self.log_is_v + ohm * is_a
-        string_s = drop * field.per_slope
+        np.multiply(drop, field.per_slope, out=string_s)
         np.exp(string_s, out=string_s)
         string_s *= field.grown_a
         first = drop
@@ -168,35 +183,36 @@ class _ForwardLaw:
         first -= is_a
         string_s *= field.per_slope
         string_s += shunt_s
-        slope = n_vt * (1.0 / start_a)
+        np.multiply(n_vt, 1.0 / start_a, out=slope)
         slope += ohm
         slope *= string_s
         slope += 1.0
         first /= slope
-        e = start_a - first
+        np.subtract(start_a, first, out=e)
         # The chord: the slope stays, the imbalance is worked out anew.
-        current_a = e - is_a
-        diode_v = np.log(e)
+        np.subtract(e, is_a, out=current_a)
+        np.log(e, out=diode_v)
         diode_v *= n_vt
         diode_v -= self.log_is_v
-        drop = ohm * current_a
-        drop += diode_v
+        again = np.multiply(ohm, current_a, out=spare)
+        again += diode_v
         second = string_s
-        np.multiply(drop, field.per_slope, out=second)
+        np.multiply(again, field.per_slope, out=second)
         np.exp(second, out=second)
         second *= field.grown_a
-        drop *= shunt_s
-        second += drop
+        again *= shunt_s
+        second += again
         second += current_a
         second -= field.limit_a
         second /= slope
         current_a -= second
         worst = max(float(second.max()), -float(second.min()))
-        if worst <= QUICK_STEP_A and float(current_a.min()) > QUICK_LEAST_A:  # not a number fails this too
-            diode_v += self.inner_ohm * current_a
+        quick = worst <= QUICK_STEP_A and float(current_a.min()) > QUICK_LEAST_A  # not a number is not quick
+        if not quick:
+            diode_v -= n_vt * second / e
+        diode_v += np.multiply(self.inner_ohm, current_a, out=spare)
+        if quick:
             return current_a, diode_v, None
-        diode_v -= n_vt * second / e
-        diode_v += self.inner_ohm * current_a
         # A chord shrinks the error by about the ratio of its step to the last, so ~ second²/first is left of it; times
         # the slope that is the imbalance left. Where the step is no small part of the current, none of this holds.
         np.abs(second, out=second)
@@ -209,6 +225,20 @@ class _ForwardLaw:
         second *= slope
         sure &= second <= first
         return current_a, diode_v, ~sure
+
+
+class _Desk(tuple[FloatArray, ...]):
+    """Seven arrays of a block's shape to compute in, kept from block to block: fresh memory costs as much as sums."""
+
+    __slots__ = ()
+
+    @classmethod
+    def of(cls, shape: tuple[int, int]) -> "_Desk":
+        return cls(np.empty(shape) for _ in range(7))
+
+    def cut(self, height: int) -> "_Desk":
+        """The same arrays for a block that may be lower than the others."""
+        return self if height == len(self[0]) else _Desk(array[:height] for array in self)
 
 
 def _descend(
