@@ -81,7 +81,7 @@ def _bracketed(
         y = np.where(settled, y, trial)
         # A volt of error moves the string's current by its conductance: hold that below the tolerance.
         current_a, conductance = string.current_and_conductance(y)
-        allowed_v = (CURRENT_ATOL_A + CURRENT_RTOL * np.abs(current_a)) / conductance
+        allowed_v = (1e-3 * CURRENT_ATOL_A + CURRENT_RTOL * np.abs(current_a)) / conductance
         settled |= (moved < np.maximum(0.1 * allowed_v, 4e-16 * np.abs(y))) | (value == 0)
         if settled.all():
             break
@@ -117,7 +117,7 @@ def reverse_block(field: Field, _before: FloatArray | None, part: slice) -> Solv
             trial = u - step
             trial = np.where((trial < low) | (trial > high), 0.5 * (low + high), trial)
             settled = (np.abs(leak_s * (trial - u)) < 0.1 * (CURRENT_ATOL_A * 1e-3 + CURRENT_RTOL * leak_a)) & (
-                np.abs(value) < CURRENT_ATOL_A * 0.1 + CURRENT_RTOL * leak_a
+                np.abs(value) < CURRENT_ATOL_A * 1e-3 + 0.1 * CURRENT_RTOL * leak_a
             )
             settled |= np.abs(trial - u) <= 2e-16 * np.abs(u)
             u = trial

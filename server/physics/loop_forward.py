@@ -219,7 +219,7 @@ class _ForwardLaw:
         sure = second <= 1e-3 * e
         sure &= current_a > 0.0
         np.abs(first, out=first)
-        first *= CURRENT_RTOL * current_a + 0.01 * CURRENT_ATOL_A
+        first *= CURRENT_RTOL * current_a + 1e-3 * CURRENT_ATOL_A
         second *= second
         second *= 4.0
         second *= slope

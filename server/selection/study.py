@@ -379,7 +379,7 @@ def _audit(states: list[LoopState]) -> Audit:
     worst_w, worst_frac = 0.0, 0.0
     for state in states:
         off = np.abs(state.imbalance_w)
-        scale = np.maximum(state.loop.string.photo_a[:, None] * state.string_junction_v, 1e-3)  # light in
+        scale = np.maximum(state.loop.string.photo_a[:, None] * state.string_junction_v, 1e-2)  # light in, or 10 mW
         if off.size:
             worst_w = max(worst_w, float(np.nanmax(off)))
             worst_frac = max(worst_frac, float(np.nanmax(off / scale)))
