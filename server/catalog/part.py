@@ -44,6 +44,14 @@ class Part:
     family: str | None = None
 
     @property
+    def parallel_legs(self) -> int:
+        """Dies that can be used side by side: both of a common-cathode pair, two of a bridge, one of a series pair.
+
+        MDD in a module's name stands for two diodes in series (maker's naming, from memory).
+        """
+        return 1 if self.type.startswith("MDD") else min(self.dies, 2)
+
+    @property
     def key(self) -> str:
         """The type as it can stand in an address: lower case, letters, digits and hyphens."""
         return re.sub(r"[^a-z0-9]+", "-", self.type.lower()).strip("-")

@@ -322,14 +322,16 @@ class StringSpec:
         m, n = self.module, self.modules_in_series
         photo_a = sun * (1.0 - self.mismatch_frac) * np.maximum(m.photo_a + m.isc_a_per_k * (t_k - T_STC_K), 0.0)
         gap = EG_EV * (1.0 + EG_PER_K * (t_k - T_STC_K))
-        exponent = (EG_EV / T_STC_K - gap / t_k) / BOLTZMANN_EV_PER_K
-        saturation = m.saturation_a * (t_k / T_STC_K) ** 3 * np.exp(exponent)
+        growth = np.exp((EG_EV / T_STC_K - gap / t_k) / BOLTZMANN_EV_PER_K)
+        saturation = m.saturation_a * (t_k / T_STC_K) ** 3 * growth
         if math.isinf(dark_shunt_ohm):
             shunt_s = sun / m.shunt_ohm  # De Soto's own law, no shunt in the dark
         else:
-            fade = math.exp(-SHUNT_EXPONENT)
-            base = max((m.shunt_ohm - dark_shunt_ohm * fade) / (1.0 - fade), 0.05 * m.shunt_ohm)
-            shunt_s = 1.0 / (base + (dark_shunt_ohm - base) * np.exp(-SHUNT_EXPONENT * sun))
+            # A very good dark shunt must fade faster, or some of it would be left in full sun.
+            exponent = max(SHUNT_EXPONENT, math.log(2.0 * dark_shunt_ohm / m.shunt_ohm))
+            fade = math.exp(-exponent)
+            base = (m.shunt_ohm - dark_shunt_ohm * fade) / (1.0 - fade)
+            shunt_s = 1.0 / (base + (dark_shunt_ohm - base) * np.exp(-exponent * sun))
         return StringCells(
             photo_a,
             np.broadcast_to(saturation, photo_a.shape),

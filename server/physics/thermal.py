@@ -67,6 +67,51 @@ def sink_needed_c_per_w(
     return (junction_limit_c - ambient_c) / power_w - rth_jc_c_per_w - interface_c_per_w
 
 
+# A heatsink's figure is quoted at this rise over the air; with less rise the air moves less and carries less. The
+# fourth root is that of laminar natural convection (textbook), and 30 K of rise makes 25 % (a heatsink maker's page).
+QUOTED_RISE_C = 75.0
+
+
+def sink_at_rise_c_per_w(quoted_c_per_w: float, power_w: float, quoted_rise_c: float = QUOTED_RISE_C) -> float:
+    """Resistance of a heatsink at the rise that `power_w` gives it, from its figure at `quoted_rise_c`.
+
+    R = R_quoted·(quoted_rise/rise)^(1/4) with rise = power·R, solved for R. Never better than quoted.
+    """
+    if power_w <= 0 or quoted_c_per_w <= 0:
+        return quoted_c_per_w
+    rise_c = float((power_w * quoted_c_per_w * quoted_rise_c**0.25) ** 0.8)
+    return max(rise_c / power_w, quoted_c_per_w)
+
+
+def sink_to_buy_c_per_w(needed_c_per_w: float, power_w: float, quoted_rise_c: float = QUOTED_RISE_C) -> float:
+    """The quoted figure that a heatsink must have to be `needed_c_per_w` at the rise that `power_w` gives it."""
+    rise_c = power_w * needed_c_per_w
+    if rise_c <= 0:
+        return needed_c_per_w
+    return needed_c_per_w * min(float((rise_c / quoted_rise_c) ** 0.25), 1.0)
+
+
+def shared_sink_c_per_w(needed_c_per_w: float, diodes: int) -> float:
+    """Resistance of one heatsink under several equal diodes: each sees the rise that all of them make."""
+    return needed_c_per_w / diodes
+
+
+BOX_W_PER_M2_C = 10.0  # heat leaving a small closed box, W per m² and °C: an engineering estimate
+
+
+def box_self_c_per_w(area_m2: float) -> float:
+    """How far the heat inside warms the air of a closed box with this outer area."""
+    return 1.0 / (BOX_W_PER_M2_C * area_m2)
+
+
+def allowable_ambient_c(junction_limit_c: float, rth_c_per_w: float, forward_w: float, reverse_w: float) -> float:
+    """Air in which both losses still hold the junction at its limit: T = TJmax − Rth·(Pf + Pr).
+
+    Source: reverse derating as on ON Semiconductor's MBR140SF sheet.
+    """
+    return junction_limit_c - rth_c_per_w * (forward_w + reverse_w)
+
+
 def derated_power_w(junction_limit_c: float, ambient_c: float, rth_c_per_w: float) -> float:
     """Power that brings the junction to its limit; 0 above the limit."""
     return max(0.0, (junction_limit_c - ambient_c) / rth_c_per_w)
@@ -149,14 +194,14 @@ class ReverseBalance:
 
 
 def reverse_balance(
-    diodes: DiodeCells, reverse_v: FloatArray | float, ambient_c: float, rth_c_per_w: FloatArray
+    diodes: DiodeCells, reverse_v: FloatArray | float, ambient_c: float, rth_c_per_w: FloatArray, halvings: int = 36
 ) -> ReverseBalance:
     """Equilibria of T = ambient + Rth·VR·IR(T), the bank holding the full reverse voltage.
 
     With g(T) = T − Rth·VR·IR(T) an ambient has an equilibrium where g crosses it: rising, it is stable; falling, it is
     the tipping point; and the top of g is the critical ambient. g rises, then falls, once each.
 
-    Shapes:  rth_c_per_w [D], reverse_v [D] or scalar.
+    Shapes:  rth_c_per_w [D], reverse_v [D] or scalar. halvings: 36 for 1e-8 K, 12 for a tenth of a K.
     """
     grid = np.linspace(-60.0, 400.0, 116)[:, None]
     volts = np.asarray(reverse_v, dtype=np.float64)
@@ -167,7 +212,7 @@ def reverse_balance(
     g = level(grid)
     top = np.argmax(g, axis=0)
     low, high = grid[np.maximum(top - 1, 0), 0], grid[np.minimum(top + 1, len(grid) - 1), 0]
-    for _ in range(44):  # g is unimodal, so thirds will do: 8 K shrink to 1e-7 K
+    for _ in range(halvings + 8):  # g is unimodal, so thirds will do: with 44 of them 8 K shrink to 1e-7 K
         a, b = low + (high - low) / 3, high - (high - low) / 3
         up = level(a) < level(b)
         low, high = np.where(up, a, low), np.where(up, high, b)
@@ -178,7 +223,7 @@ def reverse_balance(
     s_low, s_high = np.full_like(peak_c, ambient_c), np.maximum(peak_c, ambient_c)
     t_low, t_high = peak_c.copy(), np.full_like(peak_c, 400.0)
     never = level(t_high) > ambient_c
-    for _ in range(36):
+    for _ in range(halvings):
         s_mid, t_mid = 0.5 * (s_low + s_high), 0.5 * (t_low + t_high)
         below, above = level(s_mid) < ambient_c, level(t_mid) > ambient_c
         s_low, s_high = np.where(below, s_mid, s_low), np.where(below, s_high, s_mid)

@@ -73,8 +73,8 @@ def _polarity(s: Situation) -> str | None:
         return None
     where = {
         "negative": "Put it in the positive conductor: anode towards the array, cathode (band) towards the battery",
-        "positive": "Put it in the negative conductor: anode to the battery's side, cathode (band) to the array's negative",
-        "floating": "Put it in the positive conductor (a floating system): anode to the array, band to the battery",
+        "positive": "Put it in the negative conductor: anode to the bank's side, band to the array's negative",
+        "floating": "Put it in the positive conductor (a floating system): anode to the array, band to the bank",
     }[s.job.earthing]
     return (
         f"{where}, on the panel side of the controller. Test with the meter's diode range one way only, then the night "
@@ -106,9 +106,37 @@ def _headroom(s: Situation) -> str | None:
     return f"Hot days: {check.sentence}."
 
 
-def _overcharges(s: Situation) -> bool:
+def _fed_fault(s: Situation) -> str | None:
+    if s.job.charge.blocks_at_night == "yes":
+        return None
+    if s.fits_part:
+        return (
+            "Once a diode has failed short, a chafed cable or a shorted module behind it is fed by the bank: the "
+            "fuse at the "
+            "battery protects the cable, and must not exceed what the modules allow."
+        )
+    return (
+        "Without a diode a chafed cable or a shorted module is fed by the bank. The fuse at the battery is what "
+        "protects the "
+        "cable; a diode at the battery's end would keep the bank out of a short on the roof run."
+    )
+
+
+def _no_regulator(s: Situation) -> str | None:
     check = s.site_check("self_regulated")
-    return check is not None and check.outcome != "pass"
+    if check is None or check.outcome == "pass":
+        return None
+    if check.outcome == "info":
+        return (
+            "Nothing stops the charge when the bank is full. Without a regulator the largest charge current in one "
+            "hour must "
+            "stay below 3 % of the bank's Ah, which are not given here."
+        )
+    return (
+        "Nothing stops the charge when the bank is full. This array is too strong for the bank to go without a "
+        "regulator: "
+        "expect overcharge, water loss and heat."
+    )
 
 
 def _lithium_cold(s: Situation) -> bool:
@@ -151,20 +179,7 @@ RULES: Sequence[tuple[str, str, str, Say]] = (
             "spark, relay or diode box above the cells or within half a metre of them.",
         ),
     ),
-    (
-        "no_regulator",
-        "No regulator",
-        "NEC 2017 690.72, read",
-        _when(
-            lambda s: (
-                s.job.charge.controller == "direct"
-                and (c := s.site_check("self_regulated")) is not None
-                and c.outcome != "pass"
-            ),
-            "Nothing stops the charge when the bank is full. This array is too strong for the bank to go without a "
-            "regulator: expect overcharge, water loss and heat.",
-        ),
-    ),
+    ("no_regulator", "No regulator", "NEC 2017 690.72, read", _no_regulator),
     (
         "shunt_regulator",
         "Shunt regulator",
@@ -187,16 +202,7 @@ RULES: Sequence[tuple[str, str, str, Say]] = (
             "its maker about a shorted panel, and check its absolute maximum voltage against the coldest string.",
         ),
     ),
-    (
-        "fed_fault",
-        "Without a diode the bank feeds a fault",
-        "arithmetic",
-        _when(
-            lambda s: not s.fits_part and s.job.charge.blocks_at_night != "yes",
-            "A chafed cable or a shorted module is then fed by the bank. The fuse at the battery is what protects the cable; "
-            "a diode at the battery's end would keep the bank out of a short on the roof run.",
-        ),
-    ),
+    ("fed_fault", "The bank feeds a fault", "arithmetic", _fed_fault),
     ("string_fuse", "String fuses", "NEN 1010:2020 712.431.4, as explained by a trade page, read", _string_fuse),
     (
         "live_tab",

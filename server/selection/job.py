@@ -14,7 +14,7 @@ from server.physics.thermal import Box
 Controller = Literal["direct", "shunt", "series", "mppt"]
 Blocks = Literal["yes", "no", "unknown"]
 ClimateSource = Literal["preset", "grid", "monthly", "stated_day"]
-HeatPath = Literal["as_packaged", "free_air", "leads", "heatsink", "stated"]
+HeatPath = Literal["as_packaged", "free_air", "pcb", "leads", "heatsink", "stated"]
 Placement = Literal["per_string", "array"]
 Earthing = Literal["negative", "positive", "floating"]
 RuleProfile = Literal["stress_only", "double_voc", "cold_table", "double_voc_max"]
@@ -67,6 +67,13 @@ class ClimateChoice:
             if table is not None and len(table) != 12:
                 raise InputError(name, f"{len(table)} values are given; twelve are needed, January to December")
         check("dark_days_per_month", self.dark_days_per_month, 0.0, 28.0, "days")
+        if self.source == "stated_day" and self.dark_days_per_month > 0:
+            raise InputError(
+                "dark_days_per_month",
+                f"{self.dark_days_per_month:g} days do not go with one stated day, which stands for every day; "
+                "choose a "
+                "climate by month, or 0",
+            )
         for name in ("record_low_c", "record_high_c"):
             value = getattr(self, name)
             if value is not None:
@@ -117,6 +124,7 @@ class Array:
     dark_current: DarkCurrent = "middle"
     night_reading: NightReading | None = None
     max_series_fuse_a: float | None = None
+    cable_ampacity_a: float | None = None
 
     def __post_init__(self) -> None:
         """Refuse what is no array."""
@@ -126,6 +134,8 @@ class Array:
         check("mismatch_frac", self.mismatch_frac, 0.0, 0.5, "")
         if self.max_series_fuse_a is not None:
             check("max_series_fuse_a", self.max_series_fuse_a, 0.1, 500.0, "A")
+        if self.cable_ampacity_a is not None:
+            check("cable_ampacity_a", self.cable_ampacity_a, 0.1, 5000.0, "A")
 
 
 @dataclass(frozen=True, slots=True)
@@ -161,10 +171,16 @@ class Heat:
     path: HeatPath = "as_packaged"
     rth_c_per_w: float | None = None
     sink_c_per_w: float | None = None
+    sink_quoted_rise_c: float | None = None
+    """The rise at which the sink's figure is quoted; None takes the figure as it stands."""
+    one_sink: bool = False
+    """All diodes of the array on one sink (or plate), which then sees the heat of all."""
     interface_c_per_w: float = 1.0
     box: Box = "open_shade"
     box_day_c: float | None = None
     box_night_c: float | None = None
+    box_area_m2: float | None = None
+    """Outer area of a closed box: the diodes' own heat then warms its air."""
     junction_limit_c: float | None = None
     current_factor: float = 1.25
 
@@ -173,7 +189,9 @@ class Heat:
         for name, value, low, high, unit in (
             ("rth_c_per_w", self.rth_c_per_w, 0.01, 1000.0, "°C/W"),
             ("sink_c_per_w", self.sink_c_per_w, 0.0, 200.0, "°C/W"),
+            ("sink_quoted_rise_c", self.sink_quoted_rise_c, 1.0, 200.0, "°C"),
             ("interface_c_per_w", self.interface_c_per_w, 0.0, 20.0, "°C/W"),
+            ("box_area_m2", self.box_area_m2, 0.001, 100.0, "m²"),
             ("box_day_c", self.box_day_c, -60.0, 120.0, "°C"),
             ("box_night_c", self.box_night_c, -60.0, 120.0, "°C"),
             ("junction_limit_c", self.junction_limit_c, 40.0, 300.0, "°C"),
@@ -218,6 +236,8 @@ class Job:
     placement: Placement = "per_string"
     legs: Literal["one", "both"] = "one"
     earthing: Earthing = "negative"
+    other_source_v: float | None = None
+    """Highest bus voltage that a second source on the bank (wind, hydro, generator) may reach."""
     assumptions: tuple[tuple[str, str, str], ...] = ()
     """Field, value and origin of what was not given."""
 
@@ -225,10 +245,12 @@ class Job:
         """Refuse what cannot be answered."""
         if not math.isfinite(self.loop_ohm) or not 0.0 <= self.loop_ohm <= 1000.0:
             raise InputError("loop_ohm", f"{self.loop_ohm:g} ohm is outside 0 to 1000 ohm")
+        if self.other_source_v is not None:
+            check("other_source_v", self.other_source_v, 0.5 * self.bank.nominal_v, 4.0 * self.bank.nominal_v, "V")
         if len(self.parts) > MAX_CANDIDATES:
             raise InputError("candidates", f"{len(self.parts)} types are asked for; at most {MAX_CANDIDATES} are taken")
         string_voc_v = self.array.label.voc_v * self.array.modules_in_series
-        if self.charge.controller != "mppt" and string_voc_v <= self.bank.at_night_v:
+        if string_voc_v <= self.bank.at_night_v:
             raise InputError(
                 "module_voc_v",
                 f"a string of {string_voc_v:g} V open circuit cannot charge a bank that rests at "

@@ -1,16 +1,18 @@
 """The order of the candidates, and the reason in words."""
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
 from server.selection.job import Job
+from server.selection.ratings import string_protection_needed
 from server.selection.result import Candidate, DarkBand, SiteFacts, Standing, Verdict, VerdictKind
 
 # Differences below this share of the deciding period's harvest are no difference: they lie under what is knowable of a
 # site, and the cooler part is the better one.
 RESOLUTION_FRAC = 0.002
 NEAR_KNEE_FRAC = 0.3  # above this share of the heat lost to the bank, the words change
-_CLASS: dict[Standing, int] = {"pass": 0, "marginal": 1, "confirm": 2, "fail": 3, "reference": 4}
+MARGINAL_HANDICAP = 5.0  # so many resolutions must a marginal part be better than a sound one
 NONE_KEY, VALVE_KEY = "none", "perfect-valve"
 
 TECHNOLOGY_WORDS = {
@@ -36,31 +38,54 @@ class Entry:
 
 
 def order(entries: Sequence[Entry], resolution_wh: float) -> tuple[list[str], set[str]]:
-    """Keys from best to worst, and those within the resolution of the best of their standing.
+    """Keys from best to worst, and the equals of the best.
 
-    First those that pass all checks, then the marginal ones, then those that a maker must confirm; what fails and the
-    reference are left out. Within a standing the greatest net energy leads; those within the resolution of the leader
-    are its equals, and the coolest of them comes first; then the same again with the rest.
+    What fails and the reference are left out; what a maker must confirm comes last. Of the rest the greatest net energy
+    leads, a marginal candidate giving `MARGINAL_HANDICAP` resolutions away. Those within the resolution of the leader
+    are its equals: the cooler over the year comes first, and no diode is the coolest; sound before marginal. Then the
+    same again with the others. A candidate without a number comes last of its kind.
     """
     keys: list[str] = []
     tied: set[str] = set()
-    for standing in ("pass", "marginal", "confirm"):
-        rest = [entry for entry in entries if entry.standing == standing]
-        first = True
+    for kinds in (("pass", "marginal"), ("confirm",)):
+        rest = [entry for entry in entries if entry.standing in kinds and math.isfinite(entry.net_wh)]
+        lost = [entry.key for entry in entries if entry.standing in kinds and not math.isfinite(entry.net_wh)]
+        first = not keys
         while rest:
-            best = max(entry.net_wh for entry in rest)
-            equals = [entry for entry in rest if best - entry.net_wh <= resolution_wh]
-            equals.sort(key=lambda entry: (entry.heat_wh, -entry.net_wh, entry.key))
-            rest = [entry for entry in rest if best - entry.net_wh > resolution_wh]
+            best = max(_score(entry, resolution_wh) for entry in rest)
+            equals = [entry for entry in rest if best - _score(entry, resolution_wh) <= resolution_wh]
+            equals.sort(
+                key=lambda entry: (
+                    entry.heat_wh,
+                    entry.key != NONE_KEY,
+                    entry.standing != "pass",
+                    -entry.net_wh,
+                    entry.key,
+                )
+            )
+            rest = [entry for entry in rest if best - _score(entry, resolution_wh) > resolution_wh]
             if first and len(equals) > 1:
                 tied.update(entry.key for entry in equals)
             first = False
             keys += [entry.key for entry in equals]
+        keys += lost
     return keys, tied
 
 
-def winners_by_corner(candidates: Sequence[Candidate], period: int, resolution_wh: float) -> dict[tuple[str, str], str]:
-    """The best key for typical and maximum parts, and for a low, middle and high dark current of the string."""
+def _score(entry: Entry, resolution_wh: float) -> float:
+    return entry.net_wh - (MARGINAL_HANDICAP * resolution_wh if entry.standing == "marginal" else 0.0)
+
+
+@dataclass(frozen=True, slots=True)
+class Corner:
+    """The best keys where all parts are typical or maximum, at one dark current of the string."""
+
+    best: str
+    equals: frozenset[str]
+
+
+def corners(candidates: Sequence[Candidate], period: int, resolution_wh: float) -> dict[tuple[str, str], Corner]:
+    """The answer for typical and maximum parts, and for a low, middle and high dark current of the string."""
     found = {}
     for corner in ("typical", "maximum"):
         for index, dark in enumerate(("low", "middle", "high")):
@@ -68,10 +93,10 @@ def winners_by_corner(candidates: Sequence[Candidate], period: int, resolution_w
             for item in candidates:
                 band: DarkBand = item.dark_typical if corner == "typical" else item.dark_maximum
                 ledger = item.typical if corner == "typical" else item.maximum
-                entries.append(Entry(item.key, item.standing, band.net_wh[index], ledger.heat_wh[period]))
-            keys, _ = order(entries, resolution_wh)
+                entries.append(Entry(item.key, item.standing, band.net_wh[index], ledger.year_heat_wh))
+            keys, tied = order(entries, resolution_wh)
             if keys:
-                found[corner, dark] = keys[0]
+                found[corner, dark] = Corner(keys[0], frozenset(tied or keys[:1]))
     return found
 
 
@@ -136,22 +161,56 @@ def verdict(
     best = ranked[0]
     runner = ranked[1] if len(ranked) > 1 else None
     none = by_key[NONE_KEY]
-    winners = winners_by_corner(candidates, period, resolution_wh)
-    stable = len(set(winners.values())) == 1
-    kind, sentence = _sentence(job, facts, best, none)
+    by_corner = corners(candidates, period, resolution_wh)
+    blocked = job.charge.blocks_at_night == "yes" and best.key == NONE_KEY
+    stable = blocked or all(best.key in corner.equals for corner in by_corner.values())
+    shaky = not blocked and any(NONE_KEY in corner.equals for corner in by_corner.values()) and best.key != NONE_KEY
+    kind, sentence = _sentence(job, facts, best, none, ranked, resolution_wh)
     return Verdict(
         kind,
         sentence,
         best.key,
         None if runner is None else runner.key,
         _because(job, facts, best, runner, none),
-        _would_change(job, best, winners, by_key, rule_winner),
-        stable,
-        _stability(winners, best, by_key),
+        _would_change(job, best, by_corner, by_key, rule_winner),
+        stable and not shaky,
+        _stability(best, by_corner, by_key, blocked),
     )
 
 
-def _sentence(job: Job, facts: SiteFacts, best: Candidate, none: Candidate) -> tuple[VerdictKind, str]:
+def _none_sentence(facts: SiteFacts, none: Candidate, ranked: Sequence[Candidate], resolution_wh: float) -> str:
+    """Why no diode, said only as far as it is true."""
+    period, month = facts.deciding_period, when(facts)
+    drain = ampere_hours(none.typical.night_drain_ah[period])
+    taken = f"the string takes about {drain} a night out of the bank"
+    sound = [item for item in ranked if item.standing == "pass" and item.key != NONE_KEY]
+    others = [item for item in ranked if item.key != NONE_KEY]
+    if not others:
+        return (
+            f"Fit none for now: no candidate passes its checks here, and {taken} ({month}); look for a part with the "
+            "ratings that fail, or a cooler place."
+        )
+    best = max((sound or others), key=lambda item: item.typical.net_wh[period])
+    gap = none.typical.net_wh[period] - best.typical.net_wh[period]
+    if abs(gap) <= resolution_wh:
+        return f"Fit none: {taken}, and no candidate would give the bank measurably more ({month})."
+    if gap > 0:
+        return f"Fit none: {taken}, less than any candidate's drop costs by day ({month})."
+    return (
+        f"Fit none for now: {taken} ({month}); {best.title} would save most of it but is {_standing_words(best)}, so "
+        "look for "
+        "a part or a place with more margin."
+    )
+
+
+def _sentence(
+    job: Job,
+    facts: SiteFacts,
+    best: Candidate,
+    none: Candidate,
+    ranked: Sequence[Candidate],
+    resolution_wh: float,
+) -> tuple[VerdictKind, str]:
     period = facts.deciding_period
     month = when(facts)
     if best.key == NONE_KEY:
@@ -160,12 +219,7 @@ def _sentence(job: Job, facts: SiteFacts, best: Candidate, none: Candidate) -> t
                 "Fit none: your controller already blocks at night, so a diode would only cost "
                 "energy by day and save nothing by night."
             )
-        drain = ampere_hours(none.typical.night_drain_ah[period])
-        return "fit_none", (
-            f"Fit none: the string takes about {drain} a night out of the bank, less than any candidate's drop costs "
-            "by "
-            f"day ({month})."
-        )
+        return "fit_none", _none_sentence(facts, none, ranked, resolution_wh)
     quantity = 1 if job.placement == "array" else job.array.strings
     place = (
         "for the whole array" if job.placement == "array" else ("in the string" if quantity == 1 else "in each string")
@@ -212,7 +266,11 @@ def _because(job: Job, facts: SiteFacts, best: Candidate, runner: Candidate | No
         lines.append(f"against no diode it is worth {ampere_hours(gap_ah)} a day {month}")
     if facts.array_w > 0 and best.part is not None and harvest > 0:
         watts = facts.array_w * best.typical.day_loss_wh[period] / harvest
-        lines.append(f"its drop costs as much as {watts:.1f} W of panel")
+        lines.append(
+            f"its drop costs as much as {watts:.2g} W of panel"
+            if watts >= 0.05
+            else "its drop costs no panel worth naming"
+        )
     return tuple(lines)
 
 
@@ -221,7 +279,11 @@ def _ledgers_in_words(job: Job, best: Candidate, period: int) -> list[str]:
     if best.key == NONE_KEY:
         return []
     heat_wh, loss_wh = best.typical.heat_wh[period], max(best.typical.day_loss_wh[period], 0.0)
-    pair = f"of {heat_wh:.1f} Wh of heat a day the bank misses {loss_wh:.1f} Wh"
+    if heat_wh <= 0:
+        return []
+    pair = f"of {heat_wh:.2g} Wh of heat a day the bank misses " + (
+        f"{loss_wh:.2g} Wh" if loss_wh >= 0.01 * heat_wh else "next to nothing"
+    )
     if job.charge.controller == "mppt":
         return [f"behind a converter nearly all of a diode's heat is lost to the bank: {pair}"]
     if loss_wh < NEAR_KNEE_FRAC * heat_wh:
@@ -238,42 +300,67 @@ def _standing_words(item: Candidate) -> str:
 def _would_change(
     job: Job,
     best: Candidate,
-    winners: dict[tuple[str, str], str],
+    by_corner: dict[tuple[str, str], Corner],
     by_key: dict[str, Candidate],
     rule_winner: str | None,
 ) -> tuple[str, ...]:
     lines = []
-    if job.charge.blocks_at_night == "unknown" and best.key != NONE_KEY and job.charge.controller != "shunt":
+    charge = job.charge
+    if charge.blocks_at_night == "unknown" and best.key != NONE_KEY and charge.controller != "shunt":
         lines.append(
-            "if the controller blocks at night by itself, fit none: read its manual, or measure one night current"
+            "if the controller blocks at night by itself, fit none: read its manual, or take one night reading"
         )
-    if job.charge.blocks_at_night == "yes" and best.key == NONE_KEY:
+    if charge.blocks_at_night == "yes" and best.key == NONE_KEY:
         lines.append(
             "if a night reading shows current flowing back through the controller, ask again with blocking: no"
         )
-    low, high = winners.get(("typical", "low")), winners.get(("typical", "high"))
-    for dark, key in (("low", low), ("high", high)):
-        if key is not None and key != best.key:
+    else:
+        lines += _by_dark_current(best, by_corner, by_key)
+        worst = by_corner.get(("maximum", "middle"))
+        if worst is not None and best.key not in worst.equals and worst.best != NONE_KEY:
             lines.append(
-                f"if the string's dark current is at the {dark} end of its band, {by_key[key].title} wins: one night "
-                "reading settles it"
+                f"with every part at its sheet's maximum, {by_key[worst.best].title} is better: measure the part in "
+                "hand"
             )
-    worst = winners.get(("maximum", "middle"))
-    if worst is not None and worst != best.key:
-        lines.append(f"with every part at its sheet's maximum, {by_key[worst].title} wins: measure the part in hand")
     if rule_winner is not None:
         title = by_key[rule_winner].title if rule_winner in by_key else "none of the candidates"
         lines.append(f"if the rule of 2 × cold Voc applies here, {title} is the choice")
-    if job.array.strings == 2 and best.key == NONE_KEY:
-        lines.append("a third string: then fuse each string")
+    fuse, isc = job.array.max_series_fuse_a, job.array.label.isc_a
+    if job.array.strings == 2 and (fuse is None or string_protection_needed(3, isc, fuse)):
+        lines.append(
+            "a third string: then fuse each string" + ("" if fuse else " unless the label's maximum fuse allows it")
+        )
     return tuple(lines)
 
 
-def _stability(winners: dict[tuple[str, str], str], best: Candidate, by_key: dict[str, Candidate]) -> tuple[str, ...]:
-    if len(set(winners.values())) == 1:
-        return ("the same choice holds for typical and maximum parts and for a low, middle and high dark current",)
+def _by_dark_current(
+    best: Candidate, by_corner: dict[tuple[str, str], Corner], by_key: dict[str, Candidate]
+) -> list[str]:
+    """Where in its band the string's dark current would turn the answer, and whether it would turn or only tie."""
     lines = []
-    for (corner, dark), key in winners.items():
-        if key != best.key:
-            lines.append(f"{corner} parts, {dark} dark current: {by_key[key].title}")
-    return tuple(lines)
+    for dark in ("low", "high"):
+        corner = by_corner.get(("typical", dark))
+        if corner is None:
+            continue
+        end = f"if the string's dark current is at the {dark} end of its band"
+        if best.key not in corner.equals:
+            lines.append(f"{end}, {by_key[corner.best].title} is better: one night reading settles it")
+        elif best.key != NONE_KEY and NONE_KEY in corner.equals:
+            lines.append(f"{end}, no diode is as good: one night reading settles it")
+    return lines
+
+
+def _stability(
+    best: Candidate, by_corner: dict[tuple[str, str], Corner], by_key: dict[str, Candidate], blocked: bool
+) -> tuple[str, ...]:
+    lines = []
+    for (corner, dark), found in by_corner.items():
+        if blocked:
+            continue
+        if best.key not in found.equals:
+            lines.append(f"{corner} parts, {dark} dark current: {by_key[found.best].title} is better")
+        elif best.key != NONE_KEY and NONE_KEY in found.equals:
+            lines.append(f"{corner} parts, {dark} dark current: no diode is as good")
+    if lines:
+        return tuple(lines)
+    return ("the same choice holds for typical and maximum parts and for a low, middle and high dark current",)

@@ -1,23 +1,26 @@
 """Each limit, the worst case met, the margin."""
 
 import math
-from collections.abc import Sequence
-from dataclasses import dataclass
-
-import numpy as np
+from dataclasses import dataclass, replace
 
 from server.catalog.part import Part
 from server.errors import InputError
-from server.physics import thermal
-from server.physics.diode import ActiveLaw, DiodeCells, forward_drop_v
-from server.selection.job import Controller, Heat, Job, Rule, RuleProfile
+from server.physics.diode import ActiveLaw
+from server.selection.heating import (
+    LEAST_SINK_C_PER_W,
+    MARGINAL_TIPPING_C,
+    HotPart,
+    Worst,
+    allowed_current_a,
+    junction_limit_c,
+    rated_current_a,
+    reference_c,
+)
+from server.selection.job import Controller, Job, Rule, RuleProfile
 from server.selection.result import Check, Outcome, SourceStatus
 
 MARGINAL_FRAC = 0.10  # a margin below a tenth is worth a second look
 MARGINAL_JUNCTION_C = 10.0
-MARGINAL_TIPPING_C = 20.0
-LEAST_SINK_C_PER_W = 0.3  # below this no passive plate is practical (engineering estimate)
-SMALL_SINK_C_PER_W = 10.0  # assumed where a tab part needs less cooling than a small plate gives
 TOUCH_C = 60.0
 BURST_FACTOR = 1.6  # 1.6 kW/m2 at cloud edges: Yordanov, Solar Energy (2015)
 ISC_MAX_FACTOR = 1.25
@@ -90,7 +93,7 @@ def table_factor(coldest_c: float) -> float:
     Raises:  InputError below -40 °C, where the table ends.
     """
     for lowest_c, factor in NEC_TABLE_690_7A:
-        if np.floor(coldest_c) >= lowest_c:
+        if math.floor(coldest_c) >= lowest_c:
             return factor
     raise InputError(
         "record_low_c", f"{coldest_c:g} °C is below -40 °C, where the cold-voltage table ends; use the coefficient"
@@ -125,109 +128,7 @@ def voc_factor(rule: Rule) -> float | None:
     return rule.voc_factor if rule.voc_factor is not None else PROFILES[rule.profile].voc_factor
 
 
-# --- heat path --------------------------------------------------------------------------------------------------------
-
-# Class values where no sheet prints one (from memory, typical of datasheets): junction to still air, °C/W.
-CLASS_RTH_JA = (("DO-41", 60.0), ("DO-15", 50.0), ("DO-201", 32.0), ("DO-204", 32.0), ("R-6", 22.0), ("P600", 20.0))
-SMD_RTH_JA = 90.0
-CLASS_RTH_JC = 2.0
-LEADS_TO_AIR_C_PER_W = 10.0  # short leads on terminals with some copper (engineering estimate)
-
-
-@dataclass(frozen=True, slots=True)
-class Path:
-    """Junction to the air of the box, where each part of it comes from, and what sink it still needs."""
-
-    rth_c_per_w: float
-    origin: str
-    power_w: float
-    sink_needed_c_per_w: float | None
-
-
-def heat_path(part: Part, heat: Heat, current_a: float, box_c: float, altitude: float) -> Path:
-    """The way out for the heat of `part` at a continuous `current_a`.
-
-    The power is worked out with the maximum drop at a junction half way between box and limit, on the safe side of the
-    drop at the limit itself. Where the sink is left open, the path has the largest sink that holds the limit, or a
-    small plate where that is more than enough.
-    """
-    limit_c = junction_limit_c(part, heat)
-    cells = DiodeCells.of([part.maximum])
-    half_c = 0.5 * (box_c + limit_c) if limit_c > box_c else limit_c
-    power = float(_drop(cells, current_a, half_c) * current_a)
-    path = heat.path
-    if path == "as_packaged":
-        path = "free_air" if part.tab_live is None else "heatsink"
-    if heat.rth_c_per_w is not None:
-        return Path(heat.rth_c_per_w, "stated, junction to air", power, None)
-    if path == "leads":
-        if part.rth_jl_c_per_w is not None:
-            total = part.rth_jl_c_per_w + LEADS_TO_AIR_C_PER_W * altitude
-            return Path(
-                total, f"RthJL {part.rth_jl_c_per_w:g} + {LEADS_TO_AIR_C_PER_W:g} leads to air (estimate)", power, None
-            )
-        ja, origin = still_air(part)
-        return Path(0.6 * ja * altitude, f"0.6 × {origin} for held leads (estimate)", power, None)
-    if path == "heatsink":
-        jc = part.rth_jc_c_per_w
-        origin = f"RthJC {jc:g}" if jc is not None else f"RthJC {CLASS_RTH_JC:g} (class value)"
-        base = (CLASS_RTH_JC if jc is None else jc) + heat.interface_c_per_w
-        needed = thermal.sink_needed_c_per_w(
-            limit_c, box_c, power, base - heat.interface_c_per_w, heat.interface_c_per_w
-        )
-        if heat.sink_c_per_w is not None:
-            total = base + heat.sink_c_per_w * altitude
-            return Path(
-                total,
-                f"{origin} + {heat.interface_c_per_w:g} interface + {heat.sink_c_per_w:g} sink",
-                power,
-                needed / altitude,
-            )
-        sink = min(max(needed, LEAST_SINK_C_PER_W), SMALL_SINK_C_PER_W)
-        text = f"{origin} + {heat.interface_c_per_w:g} interface + a sink of {sink:.1f}"
-        return Path(base + sink, text, power, needed / altitude)
-    ja, origin = still_air(part)
-    return Path(ja * altitude, origin, power, None)
-
-
-def still_air(part: Part) -> tuple[float, str]:
-    """RthJA from the sheets, or the package's class value."""
-    if part.rth_ja_c_per_w is not None:
-        return part.rth_ja_c_per_w, f"RthJA {part.rth_ja_c_per_w:g}"
-    for name, value in CLASS_RTH_JA:
-        if part.package is not None and name in part.package:
-            return value, f"RthJA {value:g} (class value for {name})"
-    value = SMD_RTH_JA if part.tab_live is None else 60.0
-    return value, f"RthJA {value:g} (class value)"
-
-
-def junction_limit_c(part: Part, heat: Heat) -> float:
-    """The junction limit with reverse voltage applied, or the job's lower one."""
-    return part.tj_max_c if heat.junction_limit_c is None else min(part.tj_max_c, heat.junction_limit_c)
-
-
-def _drop(cells: DiodeCells, current_a: float, junction_c: float) -> float:
-    return float(forward_drop_v(cells, np.array([current_a]), np.array([junction_c]))[0])
-
-
 # --- the checks -------------------------------------------------------------------------------------------------------
-
-
-@dataclass(frozen=True, slots=True)
-class Worst:
-    """The worst case of the site, the same for every candidate."""
-
-    stress_v: float
-    cold_voc_v: float
-    hot_reverse_v: float
-    isc_a: float
-    """All that one diode carries at STC."""
-    box_c: float
-    hot_vmp_v: float
-    full_v: float
-    loop_ohm: float
-    altitude: float
-    strings_per_diode: int
 
 
 def upper(
@@ -251,41 +152,7 @@ def upper(
     return Check(code, title, met, allowed, unit, margin, outcome, rule, status, sentence)
 
 
-@dataclass(frozen=True, slots=True)
-class HotPart:
-    """One part at the worst hour: warmed by its forward current, then suddenly reversed. NaN as in ReverseBalance."""
-
-    legs: int
-    current_a: float
-    junction_c: float
-    drop_v: float
-    reverse_v: float
-    stable_typ_c: float
-    stable_max_c: float
-    tipping_typ_c: float
-    tipping_max_c: float
-
-
-def hot_parts(job: Job, worst: Worst, paths: Sequence[Path]) -> list[HotPart]:
-    """The worst hour for all parts at once: forward heat with the maximum drop, then both corners in reverse."""
-    parts = job.parts
-    if not parts:
-        return []
-    legs = [part.dies if job.legs == "both" else 1 for part in parts]
-    typical = DiodeCells.of([part.typical for part in parts], legs)
-    maximum = DiodeCells.of([part.maximum for part in parts], legs)
-    rth = np.array([path.rth_c_per_w for path in paths])
-    heat_a = job.heat.current_factor * worst.isc_a
-    junction, drop = thermal.forward_heat(maximum, np.full(len(parts), heat_a), np.full(len(parts), worst.box_c), rth)
-    volts = np.minimum(worst.hot_reverse_v, np.array([part.vrrm_v for part in parts]))
-    at_typ = thermal.reverse_balance(typical, volts, worst.box_c, rth)
-    at_max = thermal.reverse_balance(maximum, volts, worst.box_c, rth)
-    columns = (junction, drop, volts, at_typ.stable_c, at_max.stable_c, at_typ.tipping_c, at_max.tipping_c)
-    rows = zip(legs, *(column.tolist() for column in columns), strict=True)
-    return [HotPart(n, heat_a, *row) for n, *row in rows]
-
-
-def part_checks(part: Part, job: Job, worst: Worst, path: Path, hot: HotPart) -> tuple[Check, ...]:
+def part_checks(part: Part, job: Job, worst: Worst, hot: HotPart) -> tuple[Check, ...]:
     """All limits of one part. Failures are results, not errors."""
     checks = [
         upper(
@@ -317,8 +184,8 @@ def part_checks(part: Part, job: Job, worst: Worst, path: Path, hot: HotPart) ->
             )
         )
     junction, power = hot.junction_c, hot.drop_v * hot.current_a
-    checks.append(_junction_check(part, job, worst, path, junction, hot.current_a))
-    checks.append(_current_check(part, job, worst, junction, power, hot.legs))
+    checks.append(_junction_check(part, job, worst, hot))
+    checks.append(_current_check(part, job, worst, hot))
     checks.append(_stability_check(hot))
     if part.ifsm_a is not None:
         burst = BURST_FACTOR * worst.isc_a
@@ -331,11 +198,23 @@ def part_checks(part: Part, job: Job, worst: Worst, path: Path, hot: HotPart) ->
                 "A",
                 f"IFSM at or above {BURST_FACTOR:g} × Isc",
                 "read",
-                f"bursts of {BURST_FACTOR:g} kW/m² give {burst:.1f} A; one pulse of {part.ifsm_a:g} A is allowed",
+                f"bursts of {BURST_FACTOR:g} kW/m² give {burst:.1f} A for seconds; one half-sine of {part.ifsm_a:g} "
+                "A, some 8 ms "
+                "long, is the least that must stand above it",
             )
         )
-    if job.charge.controller != "mppt":
-        checks.append(headroom_check(worst, hot.drop_v, hot.current_a))
+    checks.append(headroom_check(job, worst, hot.usual_drop_v))
+    if part.dies > 1:
+        text = (
+            "both dies are used: they share one temperature and so the current, and their leakage adds"
+            if job.legs == "both"
+            else "one die is counted; two packages side by side would not share, for the warmer one takes more"
+        )
+        checks.append(
+            Check(
+                "sharing", "Sharing the current", None, None, "", None, "info", "negative VF slope", "arithmetic", text
+            )
+        )
     if part.tab_live is not None:
         live = part.tab_live
         text = (
@@ -355,59 +234,50 @@ def part_checks(part: Part, job: Job, worst: Worst, path: Path, hot: HotPart) ->
     return tuple(checks)
 
 
-def _junction_check(part: Part, job: Job, worst: Worst, path: Path, junction: float, heat_a: float) -> Check:
-    limit = junction_limit_c(part, job.heat)
+def _junction_check(part: Part, job: Job, worst: Worst, hot: HotPart) -> Check:
+    path, junction, limit = hot.path, hot.junction_c, junction_limit_c(part, job.heat)
     rule = f"{job.heat.current_factor:g} × Isc in the hottest box air, no wind"
     needed = path.sink_needed_c_per_w
     margin = (limit - junction) / limit
-    if needed is not None and job.heat.sink_c_per_w is None:
+    title, at = "Junction temperature", "past 300 °C" if junction > 300 else f"{junction:.0f} °C"
+    if path.sink_open and needed is not None:
         outcome: Outcome = "pass" if needed >= 1.0 else "marginal" if needed >= LEAST_SINK_C_PER_W else "fail"
-        text = (
-            f"on a heatsink of at most {min(needed, 99):.1f} °C/W in air of {worst.box_c:.0f} °C it stays within "
-            f"{limit:g} °C "
-            f"at {heat_a:.1f} A ({path.power_w:.1f} W)"
-            if outcome != "fail"
-            else f"no practical heatsink holds {limit:g} °C: {path.power_w:.1f} W in air of {worst.box_c:.0f} °C "
-            "would need "
-            f"{needed:.1f} °C/W"
-        )
-        return Check(
-            "junction", "Junction temperature", junction, limit, "°C", margin, outcome, rule, "arithmetic", text
-        )
-    at = "past 300 °C" if junction > 300 else f"{junction:.0f} °C"
+        if junction > limit:
+            outcome = "fail"
+        if outcome == "fail":
+            text = (
+                f"no practical heatsink holds {limit:g} °C: {path.power_w:.1f} W in air of {worst.box_c:.0f} °C "
+                "would need "
+                f"{needed:.1f} °C/W"
+            )
+        else:
+            text = (
+                f"on a heatsink of at most {needed:.1f} °C/W in air of {worst.box_c:.0f} °C its limits hold at "
+                f"{hot.current_a:.1f} A ({path.power_w:.1f} W); as computed here ({path.origin}) it reaches {at}"
+            )
+        return Check("junction", title, junction, limit, "°C", margin, outcome, rule, "arithmetic", text)
     outcome = "fail" if junction > limit else "marginal" if limit - junction < MARGINAL_JUNCTION_C else "pass"
     text = (
         f"{path.rth_c_per_w:.1f} °C/W ({path.origin}) and air of {worst.box_c:.0f} °C bring it to {at} at "
-        f"{heat_a:.1f} A; {limit:g} °C is allowed"
+        f"{hot.current_a:.1f} A; {limit:g} °C is allowed"
     )
-    return Check("junction", "Junction temperature", junction, limit, "°C", margin, outcome, rule, "arithmetic", text)
+    return Check("junction", title, junction, limit, "°C", margin, outcome, rule, "arithmetic", text)
 
 
-def derated_current_a(if_av_a: float, at_c: float, junction_limit_c: float, here_c: float) -> float:
-    """IF(AV) at `here_c`, falling in a straight line from its reference temperature to 0 at the junction limit."""
-    if junction_limit_c <= at_c:
-        return if_av_a if here_c <= at_c else 0.0
-    return if_av_a * float(np.clip((junction_limit_c - here_c) / (junction_limit_c - at_c), 0.0, 1.0))
-
-
-def _current_check(part: Part, job: Job, worst: Worst, junction: float, power: float, legs: int) -> Check:
+def _current_check(part: Part, job: Job, worst: Worst, hot: HotPart) -> Check:
     factor = current_factor(job.rule)
     met = factor * worst.isc_a
     profile = PROFILES[job.rule.profile]
     title, rule = "Continuous current", f"IF(AV) at or above {factor:g} × Isc ({profile.rule})"
-    if part.if_av_a is None:
+    air_c = worst.box_c + hot.path.box_c_per_w * hot.rule_power_w
+    rated = rated_current_a(part, hot.legs)
+    allowed = allowed_current_a(part, hot.legs, air_c, hot.rule_junction_c, hot.rule_power_w)
+    if rated is None or allowed is None:
         text = f"{met:.1f} A must be carried for ever; no rating is printed, so this is not judged"
         return Check("current", title, met, None, "A", None, "info", rule, profile.source_status, text)
-    rated = part.if_av_a
-    if part.dies > 1:
-        per_leg = rated if part.if_av_per == "leg" else rated / part.dies
-        rated = per_leg * legs
-    allowed, where = rated, "no reference temperature is printed"
+    where = "no reference temperature is printed"
     if part.if_av_at is not None and part.if_av_at_c is not None:
-        inner = {"ambient": None, "lead": part.rth_jl_c_per_w, "case": part.rth_jc_c_per_w}[part.if_av_at]
-        here = worst.box_c if part.if_av_at == "ambient" else max(junction - power * (inner or 0.0), worst.box_c)
-        top = max(part.tj_max_c, part.tj_max_forward_only_c or 0.0)
-        allowed = derated_current_a(rated, part.if_av_at_c, top, here)
+        here = reference_c(part, air_c, hot.rule_junction_c, hot.rule_power_w)
         where = f"rated {rated:g} A at {part.if_av_at_c:g} °C {part.if_av_at}, here about {here:.0f} °C"
     text = f"{met:.1f} A must be carried for ever; {allowed:.1f} A is allowed ({where})"
     if allowed <= 0:
@@ -450,31 +320,37 @@ def _stability_check(hot: HotPart) -> Check:
     return Check("stability", title, met, allowed, "°C", margin, outcome, rule, "read", text)
 
 
-def headroom_check(worst: Worst, drop_v: float, current_a: float) -> Check:
-    """Whether the hot string still reaches absorption behind diode and cable. Low headroom costs charge, not safety."""
-    left = worst.hot_vmp_v - drop_v - worst.loop_ohm * current_a
+def headroom_check(job: Job, worst: Worst, drop_v: float) -> Check:
+    """Whether the hot string still charges behind diode and cable, at Imp. It costs charge, not safety."""
+    amps = job.array.label.imp_a * worst.strings_per_diode
+    left = worst.hot_vmp_v - drop_v - worst.loop_ohm * amps
     margin = (left - worst.full_v) / worst.full_v
-    short = left < worst.full_v
     text = (
         f"hot Vmp {worst.hot_vmp_v:.1f} V less drop and cable leaves {left:.1f} V for an absorption of "
-        f"{worst.full_v:.1f} V" + (": charge is cut at the end of hot days" if short else "")
+        f"{worst.full_v:.1f} V"
     )
-    return Check(
-        "headroom",
-        "Headroom, hot",
-        left,
-        worst.full_v,
-        "V",
-        margin,
-        "info",
-        "hot Vmp − drops ≥ absorption",
-        "arithmetic",
-        text,
-    )
+    if left < worst.full_v:
+        text += (
+            ": a converter that only steps down cannot charge on hot days"
+            if job.charge.controller == "mppt"
+            else ": charge is cut at the end of hot days"
+        )
+    title, rule = "Headroom, hot", "hot Vmp − drops ≥ absorption"
+    return Check("headroom", title, left, worst.full_v, "V", margin, "info", rule, "arithmetic", text)
 
 
-def none_checks(job: Job, worst: Worst) -> tuple[Check, ...]:
-    """What speaks against leaving the diode out."""
+def bare_night_check(night_a: float, job: Job) -> Check:
+    """Whether the bare string may take what the bank would push into it by night, its dark current at the high end."""
+    limit = job.array.max_series_fuse_a
+    allowed = job.array.label.isc_a if limit is None else limit
+    rule = "current back into a string at or under the module's maximum series fuse (Isc where it is not given)"
+    text = f"by night the bank may push {night_a:.2g} A into each bare string; {allowed:g} A is allowed"
+    title = "Current back into the bare string"
+    return upper("bare_night", title, night_a, allowed, "A", rule, "arithmetic", text)
+
+
+def none_checks(job: Job, worst: Worst, night_a: float) -> tuple[Check, ...]:
+    """What speaks against leaving the diode out. night_a: the most one bare string takes in the dark, a magnitude."""
     checks = []
     controller: Controller = job.charge.controller
     if controller == "shunt":
@@ -493,9 +369,15 @@ def none_checks(job: Job, worst: Worst) -> tuple[Check, ...]:
                 text,
             )
         )
-    if controller != "mppt":
-        checks.append(headroom_check(worst, 0.0, job.heat.current_factor * worst.isc_a))
+    checks.append(headroom_check(job, worst, 0.0))
+    if controller_lets_back(job):
+        checks.append(bare_night_check(night_a, job))
     return tuple(checks)
+
+
+def controller_lets_back(job: Job) -> bool:
+    """Whether current may flow back through the controller by night, as far as is known."""
+    return job.charge.blocks_at_night != "yes"
 
 
 def site_checks(job: Job) -> tuple[Check, ...]:
@@ -531,9 +413,12 @@ def site_checks(job: Job) -> tuple[Check, ...]:
         )
         allowed = 1.35 * fuse
         margin = (allowed - met) / allowed
-        checks.append(
-            Check("string_fuse", title, met, allowed, "A", margin, "marginal" if needed else "pass", rule, "read", text)
-        )
+        outcome: Outcome = "fail" if needed else "pass"
+        checks.append(Check("string_fuse", title, met, allowed, "A", margin, outcome, rule, "read", text))
+    if controller_lets_back(job):
+        last = checks[-1]
+        bank = "; the bank can feed a fault too, so the fuse towards it must not exceed the module's maximum"
+        checks[-1] = replace(last, sentence=last.sentence + bank)
     if job.charge.controller == "direct":
         checks.append(_self_regulated(job, ISC_MAX_FACTOR * isc * strings))
     return tuple(checks)

@@ -8,6 +8,7 @@ from server.catalog.part import Part
 Outcome = Literal["pass", "marginal", "fail", "info"]
 Standing = Literal["pass", "marginal", "confirm", "fail", "reference"]
 VerdictKind = Literal["fit_part", "fit_none", "controller_blocks", "nothing_safe"]
+Bus = Literal["bank connected", "bank disconnected"]
 SourceStatus = Literal["read", "from memory", "common practice", "arithmetic"]
 
 
@@ -73,6 +74,37 @@ class DarkBand:
 
 
 @dataclass(frozen=True, slots=True)
+class ReverseHeat:
+    """One part in reverse at the worst hour, in the hottest air. Temperatures that do not exist are None.
+
+    No stable point: the leakage runs away from any temperature. Tipping: a junction hotter than this at the moment of
+    reversal runs away. Critical ambient: no stable point exists in warmer air. Allowable ambient: air in which forward
+    heat and the leakage's heat together hold the junction at its limit.
+    """
+
+    reverse_v: float
+    stable_typical_c: float | None
+    stable_maximum_c: float | None
+    tipping_typical_c: float | None
+    tipping_maximum_c: float | None
+    critical_ambient_typical_c: float | None
+    critical_ambient_maximum_c: float | None
+    allowable_ambient_c: float
+
+
+@dataclass(frozen=True, slots=True)
+class SecondSource:
+    """The bank held up at night by wind, hydro or a generator: amperes out of the bank into the array, magnitudes."""
+
+    bus_v: float
+    without_a: float
+    typical_a: float
+    maximum_a: float
+    stress_v: float
+    sentence: str
+
+
+@dataclass(frozen=True, slots=True)
 class Candidate:
     """One part, or one of the two references, judged."""
 
@@ -93,6 +125,9 @@ class Candidate:
     rth_c_per_w: float | None
     rth_origin: str
     sink_needed_c_per_w: float | None
+    sink_to_buy_c_per_w: float | None
+    """The figure, quoted at 75 °C of rise, that such a sink has in a catalogue."""
+    reverse_heat: ReverseHeat | None
     tied: bool
     """Within the resolution of the ranking of the best: heat decided, not energy."""
     reasons: tuple[str, ...]
@@ -184,6 +219,77 @@ class Audit:
 
 
 @dataclass(frozen=True, slots=True)
+class FaultCase:
+    """One fault: amperes into the faulty string, magnitudes. None: not limited by anything this study knows."""
+
+    code: str
+    title: str
+    bus: Bus
+    without_a: float | None
+    typical_a: float | None
+    maximum_a: float | None
+    """With one diode per string, a typical and a maximum part; None also where no part is chosen."""
+    allowed_a: float | None
+    """The module's maximum series fuse, or the string cable's ampacity if that is less; None: neither is given."""
+    outcome: Outcome
+    sentence: str
+
+
+@dataclass(frozen=True, slots=True)
+class FaultStudy:
+    """All cases, and the words that hold for all of them."""
+
+    cases: tuple[FaultCase, ...]
+    fuse_window_a: tuple[float, float]
+    fuse_sentence: str
+    battery_fuse_sentence: str
+    last_word: str
+
+
+@dataclass(frozen=True, slots=True)
+class NightWindow:
+    """Current out of the bank into one string in the dark, a magnitude, for one state of the diode."""
+
+    state: str
+    code: str
+    low_a: float
+    high_a: float
+    by_day: str
+    """What the same state does by day, in words."""
+
+
+@dataclass(frozen=True, slots=True)
+class DropReading:
+    """Volts across the whole part at a current, with its junction and its lead or case at about these temperatures."""
+
+    current_a: float
+    low_v: float
+    high_v: float
+    junction_c: float
+    lead_c: float | None
+    """None where no sheet prints the resistance from junction to lead or case."""
+
+
+@dataclass(frozen=True, slots=True)
+class FieldTest:
+    """What a meter should show, one string at a time."""
+
+    bank_v: float
+    night_air_c: float
+    night: tuple[NightWindow, ...]
+    pass_below_a: float | None
+    """A reading under this passes; None where a sound diode and a shorted one cannot be told apart by night."""
+    shunt_ohm: tuple[float, float]
+    shunt_pass_v: tuple[float, float] | None
+    clamp_turns: int
+    clamp_pass_a: float | None
+    voltmeter_trap_v: float | None
+    """What a 10 Mohm voltmeter shows on the panel side of a SOUND diode with the panel disconnected."""
+    day: tuple[DropReading, ...]
+    trap_sentence: str
+
+
+@dataclass(frozen=True, slots=True)
 class Study:
     """The whole answer."""
 
@@ -197,6 +303,10 @@ class Study:
     warnings: tuple[Note, ...]
     assumptions: tuple[Assumption, ...]
     audit: Audit
+    faults: FaultStudy
+    field_test: FieldTest | None
+    """None where nothing is safe to fit."""
+    second_source: SecondSource | None
     day: "DayTrace"
 
     def candidate(self, key: str) -> Candidate:

@@ -11,14 +11,16 @@ from server.errors import InputError
 from server.physics import climate, pv, thermal
 from server.physics.circuit import LoopInput, LoopState, solve
 from server.physics.climate import SiteDays
-from server.physics.diode import ActiveLaw, DiodeCells, DiodeLaw, NoDiode, PerfectValve
+from server.physics.diode import ActiveLaw, DiodeCells, DiodeLaw, NoDiode, PerfectValve, reverse_a
 from server.physics.pv import SingleDiode, StringCells, StringSpec
 from server.selection import cautions as safety
 from server.selection import ratings
+from server.selection.faults import fault_study
+from server.selection.field_test import field_test
+from server.selection.heating import HotPart, Path, Worst, hot_parts
 from server.selection.job import Job
 from server.selection.ledger import Flows, Periods, Sums, ledgers, unlit
-from server.selection.ranking import NONE_KEY, RESOLUTION_FRAC, VALVE_KEY, Entry, order, verdict
-from server.selection.ratings import Path, Worst
+from server.selection.ranking import NONE_KEY, RESOLUTION_FRAC, VALVE_KEY, Entry, milli, order, verdict
 from server.selection.result import (
     Assumption,
     Audit,
@@ -28,6 +30,7 @@ from server.selection.result import (
     DayTrace,
     Ledger,
     Note,
+    SecondSource,
     SiteFacts,
     Standing,
     Study,
@@ -63,20 +66,18 @@ def run(job: Job) -> Study:
     string = string_spec(job)
     shunts = dark_shunts(job, string.spec)
     worst = worst_case(job, site)
-    paths = [
-        ratings.heat_path(part, job.heat, worst.isc_a * job.heat.current_factor, worst.box_c, worst.altitude)
-        for part in job.parts
-    ]
-    table = _Table.of(job, paths)
+    hot = hot_parts(job, worst, ratings.current_factor(job.rule))
+    table = _Table.of(job, hot)
     periods = Periods.of(site.days, site.stated)
     solved = _solve_all(job, site, string.spec, shunts, table, periods)
     facts = _facts(job, site, string, shunts, worst, periods, solved)
-    candidates = _candidates(job, worst, paths, table, solved, facts)
-    resolution_wh = RESOLUTION_FRAC * abs(solved.valve_wh[facts.deciding_period])
-    candidates = _ranked(candidates, facts.deciding_period, resolution_wh)
+    candidates = _candidates(job, worst, hot, table, solved)
+    resolution_wh = resolution(solved.ledgers[table.valve], facts)
+    candidates = _ranked(job, candidates, facts.deciding_period, resolution_wh)
     rule_winner = _under_double_rule(job, worst, candidates, facts, resolution_wh)
     answer = verdict(job, facts, candidates, resolution_wh, rule_winner)
     choice = next((item for item in candidates if item.key == answer.choice), None)
+    none = next(item for item in candidates if item.key == NONE_KEY)
     site_wide = ratings.site_checks(job)
     assumptions = tuple(Assumption(*row) for row in job.assumptions) + _site_assumptions(job, site)
     return Study(
@@ -89,6 +90,9 @@ def run(job: Job) -> Study:
         _notes(job, site, string, choice, candidates),
         assumptions,
         solved.audit,
+        fault_study(job, string.spec, shunts[1], worst.box_c, choice, none),
+        None if answer.choice is None or choice is None else field_test(job, facts, choice, none),
+        _second_source(job, string.spec, shunts[1], facts, worst, choice),
         _trace(site, periods, facts, table, solved, choice),
     )
 
@@ -218,22 +222,25 @@ def worst_case(job: Job, site: Site) -> Worst:
     array, bank, days = job.array, job.bank, site.days
     label, n = array.label, array.modules_in_series
     cold_v, _ = cold_voc(job, days)
-    many = array.strings > 1 or job.charge.controller == "mppt"
-    top_v = bank.top_v(days.record_low_c)
-    hot_cell = float(site.plane.cell_c(np.array([FULL_SUN_W_M2]), np.array([days.record_high_c]))[0])
     carried = array.strings if job.placement == "array" else 1
+    # Strings beside a dead one, or a converter's input, can stand at open circuit; behind ONE diode all strings are on
+    # its anode's side, and only the bank can reverse it.
+    many = array.strings > carried or job.charge.controller == "mppt"
+    other_v = job.other_source_v or 0.0
+    top_v = max(bank.top_v(days.record_low_c), other_v)
+    hot_cell = float(site.plane.cell_c(np.array([FULL_SUN_W_M2]), np.array([days.record_high_c]))[0])
     vmp_slope = (
         label.voc_coefficient_pct_per_c / 100.0 * label.voc_v
     )  # volts per °C, about that of Voc (common practice)
     return Worst(
         stress_v=max(top_v, cold_v) if many else top_v,
         cold_voc_v=cold_v,
-        hot_reverse_v=max(bank.full_v, n * label.voc_at_v(hot_cell)) if many else bank.full_v,
+        hot_reverse_v=max(bank.top_v(25.0), other_v, n * label.voc_at_v(hot_cell) if many else 0.0),
         isc_a=label.isc_a * carried,
         box_c=hottest_box_c(job, site),
         hot_vmp_v=n * (label.vmp_v + vmp_slope * (hot_cell - 25.0)),
         full_v=bank.full_v,
-        loop_ohm=(job.loop_ohm + bank.internal_ohm) * array.strings / carried,
+        loop_ohm=job.loop_ohm * array.strings / carried,
         altitude=thermal.altitude_factor(site.altitude_m),
         strings_per_diode=carried,
     )
@@ -252,10 +259,10 @@ class _Table:
     supply_a: FloatArray
 
     @classmethod
-    def of(cls, job: Job, paths: list[Path]) -> "_Table":
+    def of(cls, job: Job, hot: list[HotPart]) -> "_Table":
         laws: list[DiodeLaw] = [*(part.typical for part in job.parts), *(part.maximum for part in job.parts)]
-        legs = [part.dies if job.legs == "both" else 1 for part in job.parts] * 2
-        rth = [path.rth_c_per_w for path in paths] * 2
+        legs = [item.legs for item in hot] * 2
+        rth = [item.path.rth_c_per_w for item in hot] * 2
         carried = job.array.strings if job.placement == "array" else 1
         diodes = job.array.strings // carried if carried else 1
         supply = [law.supply_a * diodes if isinstance(law, ActiveLaw) else 0.0 for law in laws]
@@ -293,8 +300,9 @@ def _solve_all(
     dark = unlit(days.poa_w_m2)
     bank_v = np.where(dark, bank.at_night_v, bank.by_day_v)
     box_c = _box_c(job, days)
-    shared_ohm = (job.loop_ohm + bank.internal_ohm) * job.array.strings
     tracks = job.charge.controller == "mppt"
+    # Behind a converter the bank's own resistance is not in the string's loop.
+    shared_ohm = (job.loop_ohm + (0.0 if tracks else bank.internal_ohm)) * job.array.strings
 
     def loop(string: StringCells, rows: NDArray[np.intp], volts: FloatArray) -> LoopState:
         carried = float(job.array.strings if job.placement == "array" else 1)
@@ -379,7 +387,7 @@ def _audit(states: list[LoopState]) -> Audit:
     worst_w, worst_frac = 0.0, 0.0
     for state in states:
         off = np.abs(state.imbalance_w)
-        scale = np.maximum(state.loop.string.photo_a[:, None] * state.string_junction_v, 1e-2)  # light in, or 10 mW
+        scale = np.maximum(state.loop.string.photo_a[:, None] * state.string_junction_v, 0.1)  # light in, or 0.1 W
         if off.size:
             worst_w = max(worst_w, float(np.nanmax(off)))
             worst_frac = max(worst_frac, float(np.nanmax(off / scale)))
@@ -389,14 +397,13 @@ def _audit(states: list[LoopState]) -> Audit:
 # --- the candidates ---------------------------------------------------------------------------------------------------
 
 
-def _candidates(
-    job: Job, worst: Worst, paths: list[Path], table: _Table, solved: _Solved, facts: SiteFacts
-) -> list[Candidate]:
+def _candidates(job: Job, worst: Worst, hot: list[HotPart], table: "_Table", solved: "_Solved") -> list[Candidate]:
     """Every part, then no diode, then the perfect valve, judged but not yet in order."""
     out = []
-    hot = ratings.hot_parts(job, worst, paths)
+    sharing = job.array.strings if job.heat.one_sink and job.placement == "per_string" else 1
     for index, part in enumerate(job.parts):
-        checks = ratings.part_checks(part, job, worst, paths[index], hot[index])
+        checks = ratings.part_checks(part, job, worst, hot[index])
+        path = hot[index].path
         standing, reasons = _standing(checks)
         if standing != "fail" and ratings.is_active(part) and job.charge.controller == "shunt":
             standing = "confirm"
@@ -416,15 +423,18 @@ def _candidates(
                 solved.bands[maximum],
                 checks,
                 hot[index].junction_c,
-                paths[index].power_w,
-                paths[index].rth_c_per_w,
-                paths[index].origin,
-                paths[index].sink_needed_c_per_w,
+                path.power_w,
+                path.rth_c_per_w,
+                path.origin,
+                path.sink_needed_c_per_w,
+                _sink_to_buy(path, sharing),
+                hot[index].in_reverse(),
                 False,
                 reasons,
             )
         )
-    checks = ratings.none_checks(job, worst)
+    bare_a = solved.bands[table.none].night_a[2] / job.array.strings
+    checks = ratings.none_checks(job, worst, bare_a)
     standing, reasons = _standing(checks)
     out.append(_reference(NONE_KEY, "No diode", "none", standing, reasons, checks, table.none, solved))
     out.append(_reference(VALVE_KEY, "Perfect valve", "reference", "reference", (), (), table.valve, solved))
@@ -459,9 +469,19 @@ def _reference(
         None,
         "",
         None,
+        None,
+        None,
         False,
         reasons,
     )
+
+
+def _sink_to_buy(path: Path, sharing: int) -> float | None:
+    """The needed sink's figure as catalogues quote it, at 75 °C of rise; None where no sink helps or none is asked."""
+    needed = path.sink_needed_c_per_w
+    if needed is None or needed <= 0:
+        return None
+    return thermal.sink_to_buy_c_per_w(needed, path.power_w * sharing)
 
 
 def _standing(checks: tuple[Check, ...]) -> tuple[Standing, tuple[str, ...]]:
@@ -473,10 +493,25 @@ def _standing(checks: tuple[Check, ...]) -> tuple[Standing, tuple[str, ...]]:
     return ("marginal", near) if near else ("pass", ())
 
 
-def _ranked(candidates: list[Candidate], period: int, resolution_wh: float) -> list[Candidate]:
+def resolution(valve: Ledger, facts: SiteFacts) -> float:
+    """The least difference in net energy that means anything, Wh a day.
+
+    A share of the deciding period's harvest; where that is next to nothing (a polar winter), of a tenth of the year's.
+    """
+    days = sum(facts.period_days)
+    mean_wh = valve.year_delivered_wh / days if days > 0 else 0.0
+    return RESOLUTION_FRAC * max(valve.delivered_wh[facts.deciding_period], 0.1 * mean_wh)
+
+
+def _entry(item: Candidate, period: int, standing: Standing | None = None) -> Entry:
+    return Entry(item.key, standing or item.standing, item.typical.net_wh[period], item.typical.year_heat_wh)
+
+
+def _ranked(job: Job, candidates: list[Candidate], period: int, resolution_wh: float) -> list[Candidate]:
     """In order of rank, then what failed by net energy, then the perfect valve."""
-    entries = [Entry(c.key, c.standing, c.typical.net_wh[period], c.typical.heat_wh[period]) for c in candidates]
-    keys, tied = order(entries, resolution_wh)
+    keys, tied = order([_entry(item, period) for item in candidates], resolution_wh)
+    if job.charge.blocks_at_night == "yes" and NONE_KEY in keys:
+        keys = [NONE_KEY, *(key for key in keys if key != NONE_KEY)]  # nothing is left for a diode to save
     by_key = {item.key: item for item in candidates}
     ranked = [replace(by_key[key], rank=place + 1, tied=key in tied) for place, key in enumerate(keys)]
     failed = sorted((c for c in candidates if c.standing == "fail"), key=lambda c: (_last(c, period), c.key))
@@ -493,14 +528,14 @@ def _under_double_rule(
     job: Job, worst: Worst, candidates: list[Candidate], facts: SiteFacts, resolution_wh: float
 ) -> str | None:
     """The choice were VRRM held to 2 × cold Voc; None where that changes nothing or is the rule already."""
-    if ratings.voc_factor(job.rule) is not None and (ratings.voc_factor(job.rule) or 0) >= 2.0:
+    if (ratings.voc_factor(job.rule) or 0.0) >= 2.0 or job.charge.blocks_at_night == "yes":
         return None
     period = facts.deciding_period
     entries = []
     for item in candidates:
         too_low = item.part is not None and item.part.vrrm_v < 2.0 * worst.cold_voc_v
         standing: Standing = "fail" if too_low else item.standing
-        entries.append(Entry(item.key, standing, item.typical.net_wh[period], item.typical.heat_wh[period]))
+        entries.append(_entry(item, period, standing))
     keys, _ = order(entries, resolution_wh)
     best = next((item.key for item in candidates if item.rank == 1), None)
     if best is None or (keys and keys[0] == best):
@@ -593,15 +628,19 @@ def _notes(
                     "it is used as the lowest the model can give",
                 )
             )
-    if job.charge.blocks_at_night == "unknown":
+    if job.charge.blocks_at_night == "unknown" and job.charge.controller != "shunt":
+        bare = next(item for item in candidates if item.key == NONE_KEY).typical
+        net_ah = max((d + n for d, n in zip(bare.net_ah, bare.night_drain_ah, strict=True)), default=0.0)
         notes.append(
             Note(
                 "blocking_unknown",
-                "whether the controller blocks at night is unknown: drains are given as if it did not; if it does, "
-                "they are "
-                "all zero, and no diode is best",
+                "whether the controller blocks at night is unknown: the string's drain is given as if it did not. If "
+                "it does, "
+                f"that drain is zero for every candidate, and no diode is best, with up to {net_ah:.2f} Ah a day net",
             )
         )
+    if job.charge.controller == "shunt" and choice is not None and choice.part is not None:
+        notes.append(_shunted_note(job, choice))
     if choice is not None and choice.part is not None:
         for remark in choice.part.warnings:
             notes.append(Note(f"part_{remark.code}", f"{choice.title}: {remark.sentence}"))
@@ -609,6 +648,22 @@ def _notes(
         field, misfit = string.fit.worst
         notes.append(Note("label_misfit", f"the module model misses the label's {field} by {100 * misfit:.1f} %"))
     return tuple(notes)
+
+
+def _shunted_note(job: Job, choice: Candidate) -> Note:
+    """What leaks back while the regulator holds the panel shorted, by day and hot: in no ledger, so said here."""
+    part = choice.part
+    assert part is not None  # noqa: S101
+    junction = np.array(choice.hottest_junction_c or 60.0)
+    legs = part.parallel_legs if job.legs == "both" else 1
+    leaks = reverse_a(DiodeCells.of([part.typical, part.maximum], [legs, legs]), np.array(job.bank.full_v), junction)
+    low, high = (float(x) for x in leaks)
+    return Note(
+        "shunted_leak",
+        f"while the regulator shorts the panel the hot diode leaks {milli(low)} to {milli(high)} back at worst; "
+        "these minutes "
+        "are not in the ledger",
+    )
 
 
 def _unsettled(candidates: list[Candidate]) -> list[Note]:
@@ -622,6 +677,33 @@ def _unsettled(candidates: list[Candidate]) -> list[Note]:
     if open_ended:
         notes.append(Note("not_converged", f"some cells did not settle for {', '.join(open_ended)}; they are left out"))
     return notes
+
+
+def _second_source(
+    job: Job, spec: StringSpec, shunt_ohm: float, facts: SiteFacts, worst: Worst, choice: Candidate | None
+) -> SecondSource | None:
+    """Drain of the dark array while another source holds the bank up, at the deciding period's night."""
+    bus_v = job.other_source_v
+    if bus_v is None:
+        return None
+    air = facts.night_air_c[facts.deciding_period]
+    night = np.array([air if math.isfinite(air) else facts.record_low_c])
+    laws: list[DiodeLaw] = [NoDiode(), NoDiode(), NoDiode()]
+    legs = [1, 1, 1]
+    if choice is not None and choice.part is not None:
+        laws[1:] = [choice.part.typical, choice.part.maximum]
+        legs[1:] = [choice.part.parallel_legs if job.legs == "both" else 1] * 2
+    carried = job.array.strings if job.placement == "array" else 1
+    ohm = (job.loop_ohm + job.bank.internal_ohm) * job.array.strings
+    dark = spec.cells(np.zeros(1), night, shunt_ohm)
+    state = solve(LoopInput(dark, DiodeCells.of(laws, legs, carried), bus_v, ohm, night, 0.0))
+    bare, typical, maximum = (float(-x) * job.array.strings for x in state.current_a[0])
+    text = (
+        f"at {bus_v:g} V by night the bare array takes {milli(bare)}"
+        + ("" if choice is None or choice.part is None else f", behind the diode {milli(typical)} to {milli(maximum)}")
+        + f"; the diode may see {worst.stress_v:.1f} V. One diode per solar string; a turbine's rectifier blocks"
+    )
+    return SecondSource(bus_v, bare, typical, maximum, worst.stress_v, text)
 
 
 def _trace(

@@ -6,7 +6,8 @@ import pytest
 from worked_jobs import cabin, launch, skiff
 
 from server.errors import InputError
-from server.selection import ratings, study
+from server.selection import study
+from server.selection.heating import derated_current_a
 from server.selection.ranking import Entry, order
 from server.web.schemas import JobIn
 
@@ -174,14 +175,21 @@ def test_standing_comes_before_energy_and_heat_decides_among_equals():
         Entry("hot", "pass", 100.0, 9.0),
         Entry("cool", "pass", 99.9, 3.0),
         Entry("poor", "pass", 90.0, 1.0),
-        Entry("edge", "marginal", 120.0, 0.0),
+        Entry("edge", "marginal", 100.8, 0.0),
+        Entry("far edge", "marginal", 140.0, 0.0),
         Entry("asks", "confirm", 130.0, 0.0),
         Entry("bad", "fail", 200.0, 0.0),
         Entry("ideal", "reference", 300.0, 0.0),
     ]
     keys, tied = order(entries, 0.2)
-    assert keys == ["cool", "hot", "poor", "edge", "asks"]
-    assert tied == {"cool", "hot"}
+    # A marginal part must be five resolutions better than a sound one: 140 is, 100.8 is not.
+    assert keys == ["far edge", "cool", "hot", "edge", "poor", "asks"]
+    assert tied == set()
+
+
+def test_equals_of_the_leader_are_told_and_a_missing_number_comes_last():
+    entries = [Entry("a", "pass", float("nan"), 1.0), Entry("none", "pass", 5.0, 0.0), Entry("b", "pass", 5.05, 2.0)]
+    assert order(entries, 0.1) == (["none", "b", "a"], {"none", "b"})
 
 
 # --- every rating has one that fails and one that passes --------------------------------------------------------------
@@ -223,9 +231,9 @@ def test_surge_can_fail_and_pass(ifsm_a, expected):
 
 
 def test_derating_is_a_straight_line_to_the_junction_limit():
-    assert ratings.derated_current_a(15.0, 100.0, 150.0, 90.0) == 15.0
-    assert ratings.derated_current_a(15.0, 100.0, 150.0, 125.0) == pytest.approx(7.5)
-    assert ratings.derated_current_a(15.0, 100.0, 150.0, 160.0) == 0.0
+    assert derated_current_a(15.0, 100.0, 150.0, 90.0) == 15.0
+    assert derated_current_a(15.0, 100.0, 150.0, 125.0) == pytest.approx(7.5)
+    assert derated_current_a(15.0, 100.0, 150.0, 160.0) == 0.0
 
 
 def test_headroom_is_told_where_the_string_is_short():
@@ -244,7 +252,7 @@ CAUTIONS = [
     ("no_regulator", SKIFF, JETTY),
     ("shunt_regulator", JETTY, SKIFF),
     ("active_confirm", SKIFF, JETTY),
-    ("fed_fault", skiff(13.8, 35.0, own_diodes=[d for d in SKIFF["own_diodes"] if d["name"] == "PN10"]), JETTY),
+    ("fed_fault", JETTY, CABIN),
     ("string_fuse", cabin(strings=4), CABIN),
     ("live_tab", cabin(blocks_at_night="no", rule_profile="stress_only", placement="array", controller="series",
                        battery_nominal_v=48, battery_night_v=53, own_diodes=[{**CABIN["own_diodes"][1], "vrrm_v": 200}]), JETTY),
