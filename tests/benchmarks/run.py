@@ -1,7 +1,7 @@
 """Speed and memory as ratios within one run:  python tests/benchmarks/run.py
 
-Absolute times say more about a machine than about the code. Each pair is timed in turn, many times over, and medians are
-compared, so that a busy moment of the machine falls on both.
+Absolute times say more about a machine than about the code. Each pair is timed in turn, many times over, and medians
+are compared, so that a busy moment of the machine falls on both.
 """
 
 import asyncio
@@ -43,7 +43,16 @@ def field(rows: int, columns: int) -> tuple[StringCells, DiodeCells]:
     string = StringSpec(MODULE, 36, 5.9).cells(rng.uniform(5, 1100, rows), rng.uniform(0, 65, rows), 1159.0)
     laws = [
         JunctionLaw(
-            10 ** rng.uniform(-9, -5), rng.uniform(1.03, 1.9), 0.67, 2.0, rng.uniform(0.003, 0.02), 0, 8e-5, 45, 0.7, 0.6
+            10 ** rng.uniform(-9, -5),
+            rng.uniform(1.03, 1.9),
+            0.67,
+            2.0,
+            rng.uniform(0.003, 0.02),
+            0,
+            8e-5,
+            45,
+            0.7,
+            0.6,
         )
         for _ in range(columns)
     ]
@@ -149,8 +158,8 @@ def compare_job() -> None:
     finally:
         study.solve = plain
     print(
-        f"demo job, {len(load_parts())} types, both corners, over HTTP: {1e3 * whole:.0f} ms = {whole / solves:.2f} x its"
-        f" bare solves ({1e3 * solves:.0f} ms)"
+        f"demo job, {len(load_parts())} types, both corners, over HTTP: {1e3 * whole:.0f} ms = {whole / solves:.2f} x"
+        f" its bare solves ({1e3 * solves:.0f} ms)"
     )
 
 

@@ -28,7 +28,7 @@ def test_cold_voltage_table(coldest_c, factor):
 
 
 def test_a_wrong_public_value_is_not_ours():
-    assert ratings.table_factor(-5) != 1.10
+    assert ratings.table_factor(-5) > 1.11
 
 
 def test_below_forty_degrees_of_frost_the_table_ends():
@@ -48,7 +48,8 @@ def test_current_factors():
 
 @pytest.mark.parametrize(("strings", "needed"), [(1, False), (2, False), (4, False), (5, True)])
 def test_the_three_string_rule(strings, needed):
-    # READ (rule): NEN 1010:2020, 712.431.4; Isc 5 A, module maximum 15 A: limit 20.25 A; 4 strings push 18.75, 5 push 25.
+    # READ (rule): NEN 1010:2020, 712.431.4; Isc 5 A, module maximum 15 A: limit 20.25 A; 4 strings push 18.75 A, 5
+    # push 25 A.
     assert ratings.string_protection_needed(strings, 5.0, 15.0) is needed
     if strings > 1:
         assert ratings.fault_current_a(strings, 5.0) == pytest.approx((strings - 1) * 6.25)
