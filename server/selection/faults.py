@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from server.physics.circuit import LoopInput, solve
 from server.physics.diode import DiodeCells, NoDiode
 from server.physics.pv import StringCells, StringSpec
+from server.selection.figures import figure
 from server.selection.job import Job
 from server.selection.ratings import ISC_MAX_FACTOR, fault_current_a
 from server.selection.result import Bus, Candidate, FaultCase, FaultStudy, Outcome
@@ -185,7 +186,7 @@ def _shorted_string(place: _Place, *, bank: bool) -> FaultCase:
         bare = _through_cable_a(place)
         diode_a = into_fault_a(_dead(place.spec), place.laws(), job.bank.full_v, place.ohm, place.box_c)
         text = "without a diode the bank feeds the short, held by nothing but cable and fuse"
-        text += "" if bare is None else f": some {bare:.0f} A through {place.ohm:.3f} ohm"
+        text += "" if bare is None else f": some {figure(bare, 3)} A through {place.ohm:.3f} ohm"
         text += "; with a sound diode only its leakage flows"
     else:
         bare = fault_current_a(job.array.strings, job.array.label.isc_a)
@@ -216,7 +217,7 @@ def _weak_string(place: _Place, code: str, title: str, faulty: StringCells, *, b
     text = f"it still holds {own_v:.1f} V; " + (
         "there is no other string to feed it"
         if bus_v == 0.0
-        else f"{source}, {bus_v:.1f} V, pushes {bare:.2g} A into it"
+        else f"{source}, {bus_v:.1f} V, pushes {figure(bare)} A into it"
         if bare > 0
         else f"{source}, {bus_v:.1f} V, pushes nothing into it: the string still gives"
     )
@@ -227,7 +228,7 @@ def _reversed_bank(place: _Place) -> FaultCase:
     """The bank connected the wrong way round: it drives the bypass diodes and the series diode forward."""
     bare = _through_cable_a(place)
     text = "a reversed bank drives the modules' bypass diodes and the series diode forward: the diode limits nothing"
-    text += "" if bare is None else f", some {bare:.0f} A flow"
+    text += "" if bare is None else f", some {figure(bare, 3)} A flow"
     text += " until the battery fuse opens, and bypass diodes fail short"
     title, allowed = "Battery connected in reverse", _allowed_a(place.job)
     return FaultCase("bank_reversed", title, "bank connected", bare, bare, bare, allowed, "fail", text)

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 from server.catalog.part import Part
 from server.physics import thermal
 from server.physics.diode import DiodeCells, FloatArray, forward_drop_v, reverse_a
+from server.selection.figures import figure
 from server.selection.job import Heat, Job
 from server.selection.result import ReverseHeat
 
@@ -222,7 +223,7 @@ def sink_path(
     elif heat.sink_quoted_rise_c is not None:
         sink = thermal.sink_at_rise_c_per_w(sink, power * sharing, heat.sink_quoted_rise_c)
     total = jc + heat.interface_c_per_w + sink * altitude * sharing + box
-    return Path(total, f"{origin} + a sink of {sink:.2g}{on_it}{boxed}", power, needed, sink_open, box)
+    return Path(total, f"{origin} + a sink of {figure(sink)}{on_it}{boxed}", power, needed, sink_open, box)
 
 
 # --- the worst hour ---------------------------------------------------------------------------------------------------

@@ -4,6 +4,7 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
+from server.selection.figures import ampere_hours, figure
 from server.selection.job import Job
 from server.selection.ratings import string_protection_needed
 from server.selection.result import Candidate, DarkBand, SiteFacts, Standing, Verdict, VerdictKind
@@ -35,6 +36,13 @@ class Entry:
     standing: Standing
     net_wh: float
     heat_wh: float
+    worst_net_wh: float | None = None
+    """Net energy with a part at its maximum; None: the same."""
+
+    @property
+    def at_worst_wh(self) -> float:
+        """Net energy with the worst part of the type."""
+        return self.net_wh if self.worst_net_wh is None else self.worst_net_wh
 
 
 def order(entries: Sequence[Entry], resolution_wh: float) -> tuple[list[str], set[str]]:
@@ -42,8 +50,8 @@ def order(entries: Sequence[Entry], resolution_wh: float) -> tuple[list[str], se
 
     What fails and the reference are left out; what a maker must confirm comes last. Of the rest the greatest net energy
     leads, a marginal candidate giving `MARGINAL_HANDICAP` resolutions away. Those within the resolution of the leader
-    are its equals: the cooler over the year comes first, and no diode is the coolest; sound before marginal. Then the
-    same again with the others. A candidate without a number comes last of its kind.
+    are its equals: first those that stay so with a part at its sheet's maximum, then the cooler over the year, and no
+    diode is the coolest. Then the same again with the others. A candidate without a number comes last of its kind.
     """
     keys: list[str] = []
     tied: set[str] = set()
@@ -54,15 +62,8 @@ def order(entries: Sequence[Entry], resolution_wh: float) -> tuple[list[str], se
         while rest:
             best = max(_score(entry, resolution_wh) for entry in rest)
             equals = [entry for entry in rest if best - _score(entry, resolution_wh) <= resolution_wh]
-            equals.sort(
-                key=lambda entry: (
-                    entry.heat_wh,
-                    entry.key != NONE_KEY,
-                    entry.standing != "pass",
-                    -entry.net_wh,
-                    entry.key,
-                )
-            )
+            firm = max(entry.at_worst_wh for entry in equals) - resolution_wh
+            equals.sort(key=lambda entry: _among_equals(entry, firm))
             rest = [entry for entry in rest if best - _score(entry, resolution_wh) > resolution_wh]
             if first and len(equals) > 1:
                 tied.update(entry.key for entry in equals)
@@ -70,6 +71,12 @@ def order(entries: Sequence[Entry], resolution_wh: float) -> tuple[list[str], se
             keys += [entry.key for entry in equals]
         keys += lost
     return keys, tied
+
+
+def _among_equals(entry: Entry, firm_wh: float) -> tuple[bool, float, bool, bool, float, str]:
+    """Sorts the leader's equals: firm first, then the coolest, then no diode, then sound ones."""
+    loose = not entry.at_worst_wh >= firm_wh
+    return loose, entry.heat_wh, entry.key != NONE_KEY, entry.standing != "pass", -entry.net_wh, entry.key
 
 
 def _score(entry: Entry, resolution_wh: float) -> float:
@@ -104,26 +111,6 @@ def when(facts: SiteFacts) -> str:
     """The deciding period as an adverb: "in December", "on the stated day"."""
     name = facts.periods[facts.deciding_period]
     return f"in {name}" if len(facts.periods) > 1 else f"on {name}"
-
-
-def milli(value_a: float) -> str:
-    """A current in the unit a meter would show."""
-    size = abs(value_a)
-    if size >= 1:
-        return f"{value_a:.1f} A"
-    if size >= 1e-3:
-        return f"{1e3 * value_a:.2g} mA" if size < 0.1 else f"{1e3 * value_a:.0f} mA"
-    return f"{1e6 * value_a:.2g} µA"
-
-
-def ampere_hours(value_ah: float) -> str:
-    """An amount of charge in Ah, or mAh where that reads better."""
-    size = abs(value_ah)
-    if size >= 0.1:
-        return f"{value_ah:.2f} Ah"
-    if size >= 1e-3:
-        return f"{1e3 * value_ah:.1f} mAh" if size < 0.01 else f"{1e3 * value_ah:.0f} mAh"
-    return f"{1e3 * value_ah:.2g} mAh" if size > 0 else "0 mAh"
 
 
 def verdict(
@@ -267,7 +254,7 @@ def _because(job: Job, facts: SiteFacts, best: Candidate, runner: Candidate | No
     if facts.array_w > 0 and best.part is not None and harvest > 0:
         watts = facts.array_w * best.typical.day_loss_wh[period] / harvest
         lines.append(
-            f"its drop costs as much as {watts:.2g} W of panel"
+            f"its drop costs as much as {figure(watts)} W of panel"
             if watts >= 0.05
             else "its drop costs no panel worth naming"
         )
@@ -281,8 +268,8 @@ def _ledgers_in_words(job: Job, best: Candidate, period: int) -> list[str]:
     heat_wh, loss_wh = best.typical.heat_wh[period], max(best.typical.day_loss_wh[period], 0.0)
     if heat_wh <= 0:
         return []
-    pair = f"of {heat_wh:.2g} Wh of heat a day the bank misses " + (
-        f"{loss_wh:.2g} Wh" if loss_wh >= 0.01 * heat_wh else "next to nothing"
+    pair = f"of {figure(heat_wh)} Wh of heat a day the bank misses " + (
+        f"{figure(loss_wh)} Wh" if loss_wh >= 0.01 * heat_wh else "next to nothing"
     )
     if job.charge.controller == "mppt":
         return [f"behind a converter nearly all of a diode's heat is lost to the bank: {pair}"]

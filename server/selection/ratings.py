@@ -6,6 +6,7 @@ from dataclasses import dataclass, replace
 from server.catalog.part import Part
 from server.errors import InputError
 from server.physics.diode import ActiveLaw
+from server.selection.figures import figure
 from server.selection.heating import (
     LEAST_SINK_C_PER_W,
     MARGINAL_TIPPING_C,
@@ -344,7 +345,7 @@ def bare_night_check(night_a: float, job: Job) -> Check:
     limit = job.array.max_series_fuse_a
     allowed = job.array.label.isc_a if limit is None else limit
     rule = "current back into a string at or under the module's maximum series fuse (Isc where it is not given)"
-    text = f"by night the bank may push {night_a:.2g} A into each bare string; {allowed:g} A is allowed"
+    text = f"by night the bank may push {figure(night_a)} A into each bare string; {allowed:g} A is allowed"
     title = "Current back into the bare string"
     return upper("bare_night", title, night_a, allowed, "A", rule, "arithmetic", text)
 

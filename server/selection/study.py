@@ -17,10 +17,11 @@ from server.selection import cautions as safety
 from server.selection import ratings
 from server.selection.faults import fault_study
 from server.selection.field_test import field_test
+from server.selection.figures import milli
 from server.selection.heating import HotPart, Path, Worst, hot_parts
 from server.selection.job import Job
 from server.selection.ledger import Flows, Periods, Sums, ledgers, unlit
-from server.selection.ranking import NONE_KEY, RESOLUTION_FRAC, VALVE_KEY, Entry, milli, order, verdict
+from server.selection.ranking import NONE_KEY, RESOLUTION_FRAC, VALVE_KEY, Entry, order, verdict
 from server.selection.result import (
     Assumption,
     Audit,
@@ -80,6 +81,8 @@ def run(job: Job) -> Study:
     none = next(item for item in candidates if item.key == NONE_KEY)
     site_wide = ratings.site_checks(job)
     assumptions = tuple(Assumption(*row) for row in job.assumptions) + _site_assumptions(job, site)
+    if choice is not None and choice.part is not None:
+        assumptions += tuple(Assumption("candidates", choice.title, text) for text in choice.part.assumed)
     return Study(
         ENGINE_VERSION,
         answer,
@@ -504,7 +507,10 @@ def resolution(valve: Ledger, facts: SiteFacts) -> float:
 
 
 def _entry(item: Candidate, period: int, standing: Standing | None = None) -> Entry:
-    return Entry(item.key, standing or item.standing, item.typical.net_wh[period], item.typical.year_heat_wh)
+    typical, maximum = item.typical, item.maximum
+    return Entry(
+        item.key, standing or item.standing, typical.net_wh[period], typical.year_heat_wh, maximum.net_wh[period]
+    )
 
 
 def _ranked(job: Job, candidates: list[Candidate], period: int, resolution_wh: float) -> list[Candidate]:
@@ -644,6 +650,7 @@ def _notes(
     if choice is not None and choice.part is not None:
         for remark in choice.part.warnings:
             notes.append(Note(f"part_{remark.code}", f"{choice.title}: {remark.sentence}"))
+        notes += _outside_print(job, choice)
     if string.fit is not None and string.fit.worst[1] > 0.005:
         field, misfit = string.fit.worst
         notes.append(Note("label_misfit", f"the module model misses the label's {field} by {100 * misfit:.1f} %"))
@@ -664,6 +671,34 @@ def _shunted_note(job: Job, choice: Candidate) -> Note:
         "these minutes "
         "are not in the ledger",
     )
+
+
+def _outside_print(job: Job, choice: Candidate) -> list[Note]:
+    """Where the job takes the chosen part outside what its sheets print."""
+    part = choice.part
+    if part is None:
+        return []
+    forward = [p for sheet in part.sheets for p in sheet.forward]
+    reverse = [p for sheet in part.sheets for p in sheet.reverse if p.junction_c is not None]
+    notes = []
+    strings = job.array.strings if job.placement == "array" else 1
+    amps = job.heat.current_factor * job.array.label.isc_a * strings / (part.parallel_legs if job.legs == "both" else 1)
+    if forward and amps > 1.01 * (most := max(p.current_a for p in forward)):
+        notes.append(
+            Note(
+                "above_printed_current",
+                f"{choice.title}: {amps:.1f} A a leg; its drop is printed up to {most:g} A only",
+            )
+        )
+    hottest = choice.hottest_junction_c
+    if reverse and hottest is not None and hottest > 5.0 + (top := max(p.junction_c or 0.0 for p in reverse)):
+        notes.append(
+            Note(
+                "above_printed_heat",
+                f"{choice.title}: its junction may reach {hottest:.0f} °C; leakage is printed up to {top:g} °C only",
+            )
+        )
+    return notes
 
 
 def _unsettled(candidates: list[Candidate]) -> list[Note]:

@@ -187,6 +187,11 @@ def test_standing_comes_before_energy_and_heat_decides_among_equals():
     assert tied == set()
 
 
+def test_among_equals_the_one_that_stays_so_at_maximum_leads():
+    entries = [Entry("big die", "pass", 68.03, 1.3, 67.80), Entry("smaller die", "pass", 68.04, 1.5, 68.00)]
+    assert order(entries, 0.14)[0] == ["smaller die", "big die"]
+
+
 def test_equals_of_the_leader_are_told_and_a_missing_number_comes_last():
     entries = [Entry("a", "pass", float("nan"), 1.0), Entry("none", "pass", 5.0, 0.0), Entry("b", "pass", 5.05, 2.0)]
     assert order(entries, 0.1) == (["none", "b", "a"], {"none", "b"})
