@@ -105,6 +105,17 @@ class SecondSource:
 
 
 @dataclass(frozen=True, slots=True)
+class Crossover:
+    """Night temperatures at which the best silicon diode overtakes the choice; None: never within the asked range."""
+
+    rival: str
+    title: str
+    typical_c: float | None
+    maximum_c: float | None
+    sentence: str
+
+
+@dataclass(frozen=True, slots=True)
 class Candidate:
     """One part, or one of the two references, judged."""
 
@@ -307,6 +318,7 @@ class Study:
     field_test: FieldTest | None
     """None where nothing is safe to fit."""
     second_source: SecondSource | None
+    crossover: Crossover | None
     day: "DayTrace"
 
     def candidate(self, key: str) -> Candidate:

@@ -15,6 +15,7 @@ from server.physics.diode import ActiveLaw, DiodeCells, DiodeLaw, NoDiode, Perfe
 from server.physics.pv import SingleDiode, StringCells, StringSpec
 from server.selection import cautions as safety
 from server.selection import ratings
+from server.selection.crossover import crossover
 from server.selection.faults import fault_study
 from server.selection.field_test import field_test
 from server.selection.figures import milli
@@ -96,6 +97,7 @@ def run(job: Job) -> Study:
         fault_study(job, string.spec, shunts[1], worst.box_c, choice, none),
         None if answer.choice is None or choice is None else field_test(job, facts, choice, none),
         _second_source(job, string.spec, shunts[1], facts, worst, choice),
+        None if choice is None else crossover(job, string.spec, shunts[1], facts, choice, candidates),
         _trace(site, periods, facts, table, solved, choice),
     )
 
