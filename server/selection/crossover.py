@@ -24,7 +24,7 @@ def break_even_leakage_a(drop_saved_v: float, charge_ah: float, bank_v: float, d
 def crossover(
     job: Job, spec: StringSpec, shunt_ohm: float, facts: SiteFacts, choice: Candidate, candidates: list[Candidate]
 ) -> Crossover | None:
-    """Where the best silicon diode that may be fitted overtakes the choice, the deciding period's days kept as they are.
+    """Where the best silicon diode that may be fitted overtakes the choice, the deciding period's days as they are.
 
     None where the choice is itself one, or no part, or none of them may be fitted. Night and junction are taken at one
     temperature; the string's own dark current is in it.
@@ -70,5 +70,4 @@ def _words(rival: str, typical: float | None, maximum: float | None) -> str:
             return f"above {HOTTEST_C:.0f} °C"
         return f"about {figure(round(value), 3)} °C" if value > COLDEST_C else "any temperature"
 
-    return f"{rival} overtakes it at nights of {at(typical)} with typical parts, {at(maximum)} with parts at their "
-    "maximum"
+    return f"{rival} overtakes it at nights of {at(typical)} with typical parts, {at(maximum)} with maximum ones"
