@@ -1,5 +1,7 @@
 """The loop: limits by hand, laws, an independent solver, and a batch equal to its cells one at a time."""
 
+import tracemalloc
+
 import numpy as np
 import pytest
 from hypothesis import given, settings
@@ -233,3 +235,18 @@ def test_any_string_any_bank_is_finite_and_closes_or_is_marked(
     assert fine[:, NONE:].all()
     off = np.abs(state.imbalance_w[fine])
     assert np.all(off <= 1e-9 * np.maximum(np.abs(state.string_w[fine]), isc * voc * 1e-3) + 1e-9)
+
+
+def test_a_year_of_hours_for_forty_types_and_both_corners_stays_small():
+    hours = np.arange(8760)
+    light = 900.0 * np.clip(np.sin(hours / 24 * 2 * np.pi - np.pi / 2), 0.0, None)
+    string = SPEC.cells(light, 15.0 + light / 40.0, 1159.0)
+    diodes = DiodeCells.of([SCHOTTKY, SILICON] * 40)
+    tracemalloc.start()
+    try:
+        state = solve(LoopInput(string, diodes, 13.0, 0.055, 20.0 + light / 50.0, 5.0))
+        _, peak = tracemalloc.get_traced_memory()
+    finally:
+        tracemalloc.stop()
+    assert state.converged.all()
+    assert peak < 400e6

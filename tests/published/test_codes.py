@@ -43,7 +43,8 @@ def test_a_fraction_of_a_degree_counts_as_the_colder_row():
 
 def test_current_factors():
     # READ: Isc 11.2 A -> 14.0 A (× 1.25) -> 17.5 A (× 1.5625); NEC 690.8(A), note: together 156 %.
-    assert 11.2 * ratings.ISC_MAX_FACTOR == pytest.approx(14.0)
+    isc_max_a = 11.2 * ratings.ISC_MAX_FACTOR
+    assert isc_max_a == pytest.approx(14.0)
     assert 11.2 * ratings.current_factor(Rule("cold_table")) == pytest.approx(17.5)
 
 

@@ -29,7 +29,7 @@ def test_break_even_leakage(charge_ah, cell, v12, v24, v48):
 
 
 def test_a_small_schottky_crosses_the_tenth_of_an_ah_line_hot_on_typical_cold_on_maximum_figures():
-    # 3 A / 40 V axial, 0.1 mA typical and 2 mA maximum at 25 °C, 5 and 20 mA at 100 °C, at 40 V: with exponential growth
+    # 3 A / 40 V axial, 0.1 mA typical and 2 mA maximum at 25 °C, 5 and 20 mA at 100 °C, at 40 V: growing exponentially
     # it crosses 0.23 mA at about +56 °C on typical and -19 °C on maximum figures. Arrhenius between the same points
     # falls faster in the cold, so the cold crossing comes some degrees warmer.
     reverse = [

@@ -1,5 +1,12 @@
+import contextlib
+import os
+import shutil
+import threading
+import time
+
 import httpx
 import pytest
+import uvicorn
 
 from server.web.app import create_app
 from server.web.work import Desk
@@ -86,3 +93,57 @@ def _assert_error_shape(answer, status=422, field=None, says=()):
         for word in says:
             assert word in sentences[0], sentences[0]
     return body
+
+
+# --- a real browser ---------------------------------------------------------------------------------------------------
+
+BROWSERS = ("chromium", "chromium-browser", "google-chrome", "google-chrome-stable")
+FLAGS = (
+    "--no-sandbox",
+    "--disable-gpu",
+    "--disable-quic",
+    "--no-first-run",
+    "--disable-background-networking",
+    "--disable-component-update",
+    "--disable-sync",
+)
+
+
+def _missing(what):
+    """Where a browser is asked for, one that is missing is a failure; elsewhere the test says why it did not run."""
+    reason = f"{what} is not installed; set REQUIRE_BROWSER to make this a failure"
+    if os.environ.get("REQUIRE_BROWSER"):
+        pytest.fail(f"REQUIRE_BROWSER is set, but {what} is not installed", pytrace=False)
+    pytest.skip(reason)
+
+
+@pytest.fixture(scope="module")
+def browser():
+    """Chromium, driven from outside. It ends with its module, for it keeps an event loop of its own."""
+    try:
+        from playwright.sync_api import sync_playwright
+    except ImportError:
+        _missing("playwright")
+    found = next((path for path in map(shutil.which, BROWSERS) if path), None)
+    if found is None:
+        _missing("chromium")
+    with (
+        sync_playwright() as driver,
+        contextlib.closing(driver.chromium.launch(executable_path=found, args=list(FLAGS))) as opened,
+    ):
+        yield opened
+
+
+@pytest.fixture(scope="module")
+def site(kept_desk):
+    """The site at a port of this computer."""
+    server = uvicorn.Server(uvicorn.Config(create_app(kept_desk), port=0, lifespan="off", log_level="error"))
+    thread = threading.Thread(target=server.run, daemon=True)
+    thread.start()
+    until = time.monotonic() + 20
+    while not server.started and time.monotonic() < until:
+        time.sleep(0.02)
+    assert server.started
+    yield f"http://127.0.0.1:{server.servers[0].sockets[0].getsockname()[1]}"
+    server.should_exit = True
+    thread.join(20)
