@@ -4,18 +4,20 @@ A blocking diode is not overcurrent protection. This study says what it does and
 faulty string with and without diodes, from the same loop solved with that string's own curve.
 """
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from server.physics.circuit import LoopInput, solve
-from server.physics.diode import DiodeCells, NoDiode
+from server.physics.diode import DiodeCells, DiodeLaw, NoDiode
 from server.physics.pv import StringCells, StringSpec
-from server.selection.figures import figure
+from server.selection.figures import figure, milli
+from server.selection.heating import Worst
 from server.selection.job import Job
 from server.selection.ratings import ISC_MAX_FACTOR, fault_current_a
-from server.selection.result import Bus, Candidate, FaultCase, FaultStudy, Outcome
+from server.selection.result import Bus, Candidate, FaultCase, FaultStudy, Outcome, SecondSource, SiteFacts
 
 FloatArray = NDArray[np.float64]
 
@@ -245,3 +247,30 @@ def _shorted_diode(none: Candidate) -> FaultCase:
     return FaultCase(
         "diode_shorted", "A diode failed short", "bank connected", middle, middle, high, None, "info", text
     )
+
+
+def second_source(
+    job: Job, spec: StringSpec, shunt_ohm: float, facts: SiteFacts, worst: Worst, choice: Candidate | None
+) -> SecondSource | None:
+    """Drain of the dark array while another source holds the bank up, at the deciding period's night."""
+    bus_v = job.other_source_v
+    if bus_v is None:
+        return None
+    air = facts.night_air_c[facts.deciding_period]
+    night = np.array([air if math.isfinite(air) else facts.record_low_c])
+    laws: list[DiodeLaw] = [NoDiode(), NoDiode(), NoDiode()]
+    legs = [1, 1, 1]
+    if choice is not None and choice.part is not None:
+        laws[1:] = [choice.part.typical, choice.part.maximum]
+        legs[1:] = [choice.part.parallel_legs if job.legs == "both" else 1] * 2
+    carried = job.array.strings if job.placement == "array" else 1
+    ohm = (job.loop_ohm + job.bank.internal_ohm) * job.array.strings
+    dark = spec.cells(np.zeros(1), night, shunt_ohm)
+    state = solve(LoopInput(dark, DiodeCells.of(laws, legs, carried), bus_v, ohm, night, 0.0))
+    bare, typical, maximum = (float(-x) * job.array.strings for x in state.current_a[0])
+    text = (
+        f"at {bus_v:g} V by night the bare array takes {milli(bare)}"
+        + ("" if choice is None or choice.part is None else f", behind the diode {milli(typical)} to {milli(maximum)}")
+        + f"; the diode may see {worst.stress_v:.1f} V. One diode per solar string; a turbine's rectifier blocks"
+    )
+    return SecondSource(bus_v, bare, typical, maximum, worst.stress_v, text)

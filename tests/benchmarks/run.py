@@ -25,7 +25,7 @@ from server.physics import diode as dio  # noqa: E402
 from server.physics.circuit import LoopInput, LoopState, solve  # noqa: E402
 from server.physics.diode import DiodeCells, JunctionLaw  # noqa: E402
 from server.physics.pv import ModuleLabel, SingleDiode, StringCells, StringSpec, fit_label  # noqa: E402
-from server.selection import study  # noqa: E402
+from server.selection import solving  # noqa: E402
 
 MODULE = SingleDiode(5.91, 3.07e-11, 0.8476, 0.2185, 137.3, 0.003)
 BOX_C, OHM = 40.0, 0.055
@@ -152,11 +152,11 @@ def compare_job() -> None:
                 assert answer.status_code == 200, answer.text
             return median(whole[1:]), median(solves[1:])
 
-    study.solve = timed
+    solving.solve = timed
     try:
         whole, solves = asyncio.run(ask())
     finally:
-        study.solve = plain
+        solving.solve = plain
     print(
         f"demo job, {len(load_parts())} types, both corners, over HTTP: {1e3 * whole:.0f} ms = {whole / solves:.2f} x"
         f" its bare solves ({1e3 * solves:.0f} ms)"

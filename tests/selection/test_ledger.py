@@ -6,7 +6,7 @@ import pytest
 from scipy.optimize import brentq
 from worked_jobs import CLASSES, launch
 
-from server.selection import study
+from server.selection import site, study
 from server.web.schemas import JobIn
 
 K_EV, T0 = 8.617333262e-5, 298.15
@@ -14,12 +14,12 @@ K_EV, T0 = 8.617333262e-5, 298.15
 
 def day_by_hand(job, law, *, bank_day_v, bank_night_v, rth, box_day_c, box_night_c):
     """Ah in, Wh of heat, Ah drained over one day of one string; and Ah in through a perfect valve."""
-    site = study.site_days(job)
-    string = study.string_spec(job).spec
+    days = site.site_days(job).days
+    string = site.string_spec(job).spec
     module = string.module
-    dark_ohm = study.dark_shunts(job, string)[1]
+    dark_ohm = site.dark_shunts(job, string)[1]
     charged = heat = drained = ideal = 0.0
-    for sun, cell_c in zip(site.days.poa_w_m2, site.days.cell_c, strict=True):
+    for sun, cell_c in zip(days.poa_w_m2, days.cell_c, strict=True):
         t = cell_c + 273.15
         photo = sun / 1000 * (module.photo_a + module.isc_a_per_k * (t - T0))
         gap = 1.121 * (1 - 0.0002677 * (t - T0))
@@ -42,7 +42,7 @@ def day_by_hand(job, law, *, bank_day_v, bank_night_v, rth, box_day_c, box_night
         if given(bank) > 0:
             top = brentq(given, 0, 100)
             valve_y = brentq(lambda y, b=bank, g=given, r=ohm: y - b - g(y) * r, bank, top)
-            ideal += given(valve_y) * site.days.step_h
+            ideal += given(valve_y) * days.step_h
             tj = box
             for _ in range(60):
                 n_vt = law.ideality * K_EV * (tj + 273.15)
@@ -56,8 +56,8 @@ def day_by_hand(job, law, *, bank_day_v, bank_night_v, rth, box_day_c, box_night
                 amps = max(given(brentq(off, bank, top, xtol=1e-13)), 0.0)
                 drop = n_vt * math.log1p(amps / i_s) + amps * inner
                 tj = box + rth * amps * drop
-            charged += amps * site.days.step_h
-            heat += amps * drop * site.days.step_h
+            charged += amps * days.step_h
+            heat += amps * drop * days.step_h
         else:
             tj = box
             n_vt = law.ideality * K_EV * (tj + 273.15)
@@ -76,7 +76,7 @@ def day_by_hand(job, law, *, bank_day_v, bank_night_v, rth, box_day_c, box_night
                 return i + g(b - u - i * r)
 
             u = brentq(back, 0, bank, xtol=1e-14)
-            drained += (first * -math.expm1(-u / width) + (leak - first) * shape(u)) * site.days.step_h
+            drained += (first * -math.expm1(-u / width) + (leak - first) * shape(u)) * days.step_h
     return charged, heat, drained, ideal
 
 
