@@ -16,7 +16,7 @@ from server.physics.pv import StringCells, StringSpec
 from server.selection.figures import figure, milli
 from server.selection.heating import Worst
 from server.selection.job import Job
-from server.selection.ratings import ISC_MAX_FACTOR, fault_current_a
+from server.selection.ratings import ISC_MAX_FACTOR, controller_lets_back, fault_current_a
 from server.selection.result import Bus, Candidate, FaultCase, FaultStudy, Outcome, SecondSource, SiteFacts
 
 FloatArray = NDArray[np.float64]
@@ -76,20 +76,18 @@ def fault_study(
     most. choice: the candidate fitted, None for none. none: the candidate without a diode.
     """
     place = _Place(job, spec, shunt_ohm, box_c, choice)
-    cases = [_shorted_string(place, bank=True), _shorted_string(place, bank=False)]
+    # Behind a controller that lets nothing back, the bank feeds no fault of the array.
+    banks = (True, False) if controller_lets_back(job) else (False,)
+    cases = [_shorted_string(place, bank=bank) for bank in banks]
     if job.array.modules_in_series > 1:
         faulty = place.lit(modules=spec.modules_in_series - 1)
-        cases += [
-            _weak_string(place, "module_shorted", "One module shorted", faulty, bank=bank) for bank in (True, False)
-        ]
+        cases += [_weak_string(place, "module_shorted", "One module shorted", faulty, bank=bank) for bank in banks]
     if job.array.strings > 1:
         faulty = place.lit(SHADE_W_M2)
-        cases += [
-            _weak_string(place, "string_shaded", "One string in shade", faulty, bank=bank) for bank in (True, False)
-        ]
+        cases += [_weak_string(place, "string_shaded", "One string in shade", faulty, bank=bank) for bank in banks]
     cases.append(_reversed_bank(place))
     if place.fitted:
-        cases.append(_shorted_diode(none))
+        cases.append(_shorted_diode(none, job.array.strings))
     isc = job.array.label.isc_a
     rating = job.array.max_series_fuse_a
     ceiling = FUSE_CEILING * isc if rating is None else min(FUSE_CEILING * isc, rating)
@@ -236,14 +234,14 @@ def _reversed_bank(place: _Place) -> FaultCase:
     return FaultCase("bank_reversed", title, "bank connected", bare, bare, bare, allowed, "fail", text)
 
 
-def _shorted_diode(none: Candidate) -> FaultCase:
-    """The usual end of an overheated diode, and a silent one. The currents are the bare array's by night."""
+def _shorted_diode(none: Candidate, strings: int) -> FaultCase:
+    """The usual end of an overheated diode, and a silent one. The currents are one bare string's by night."""
     text = (
-        "charging looks perfect and by night the drain of the bare array is back; every case above then stands as "
+        "charging looks perfect and by night the drain of the bare string is back; every case above then stands as "
         "without "
         "a diode. Only a night reading shows it"
     )
-    _, middle, high = none.dark_typical.night_a
+    _, middle, high = (x / strings for x in none.dark_typical.night_a)
     return FaultCase(
         "diode_shorted", "A diode failed short", "bank connected", middle, middle, high, None, "info", text
     )

@@ -3,6 +3,7 @@
 import numpy as np
 
 from server.physics.diode import DiodeCells, forward_drop_v, reverse_a
+from server.selection.figures import figure
 from server.selection.job import Job
 from server.selection.result import Candidate, DropReading, FieldTest, NightWindow, SiteFacts
 
@@ -47,9 +48,18 @@ def field_test(job: Job, facts: SiteFacts, choice: Candidate, none: Candidate) -
         None if pass_below is None else pass_below * CLAMP_TURNS,
         trap_v,
         _by_day(job, choice),
-        "a voltmeter on the panel side, the panel disconnected, shows nearly full voltage through a perfectly good "
-        "diode, for "
-        "its own microampere is all the leakage it needs: load the point with 1 to 10 kΩ, or leave the panel on",
+        _trap_words(trap_v, facts.night_v),
+    )
+
+
+def _trap_words(trap_v: float | None, bank_v: float) -> str:
+    """What a voltmeter alone shows on the panel's side of a sound diode, and how not to be misled."""
+    how = "load the point with 1 to 10 kΩ, or leave the panel on"
+    if trap_v is None:
+        return f"a voltmeter alone tells nothing of a diode, whose leakage may be less than the meter takes: {how}"
+    return (
+        f"a 10 MΩ voltmeter on the panel side, the panel disconnected, shows {figure(trap_v, 3)} V of "
+        f"{figure(bank_v, 3)} V through a sound diode, for the meter's own microampere is all the leakage it needs: {how}"
     )
 
 

@@ -42,7 +42,7 @@ def run(job: Job) -> Study:
     site_wide = ratings.site_checks(job)
     assumptions = tuple(Assumption(*row) for row in job.assumptions) + site_assumptions(job, site)
     if choice is not None and choice.part is not None:
-        assumptions += tuple(Assumption("candidates", choice.title, text) for text in choice.part.assumed)
+        assumptions += tuple(Assumption("part", choice.title, text) for text in choice.part.assumed)
     return Study(
         ENGINE_VERSION,
         answer,

@@ -23,7 +23,7 @@ from server.errors import InputError, Overloaded
 from server.paths import asset_dir
 from server.physics.lazy import pvlib_module
 from server.selection.study import ENGINE_VERSION
-from server.web import api, pages, refusals, words
+from server.web import api, diodes, pages, refusals, words
 from server.web.form import DEMO
 from server.web.guard import MAX_BODY_BYTES, SORRY, TOO_LARGE, Guard
 from server.web.loop import LoopIn
@@ -56,6 +56,7 @@ def create_app(desk: Desk | None = None) -> ASGIApp:
     )
     app.state.desk = desk or Desk()
     app.state.templates = _templates()
+    app.include_router(diodes.router)
     app.include_router(pages.router)
     app.include_router(api.router)
     app.mount("/static", _Static(directory=asset_dir("static")))

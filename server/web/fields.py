@@ -212,12 +212,6 @@ MODULE = Group(
         Field("isc_pct_per_c", "Temperature coefficient of Isc", "%/°C", placeholder="class value of the cell type"),
         Field("max_series_fuse_a", "Maximum series fuse on the label", "A"),
         Field(
-            "cable_ampacity_a",
-            "What the string cable may carry",
-            "A",
-            hint="For the fault study; by your code’s table.",
-        ),
-        Field(
             "dark_current",
             "Estimated current back into the unlit module",
             kind="choice",
@@ -273,6 +267,13 @@ CABLE = Group(
         Field("cable_c", "Temperature of the cable", "°C", placeholder="40"),
         Field("terminals_ohm", "Terminals and fuse holders, all", "Ω", hint="Default 0."),
         Field("loop_ohm", "or the whole loop’s resistance", "Ω", hint="Takes the place of everything above."),
+        Field(
+            "cable_ampacity_a",
+            "What the string cable may carry",
+            "A",
+            placeholder="not judged",
+            hint="By your code’s table, where it lies; fault currents are held against it.",
+        ),
     ),
     "Left empty: 5 m of 4 mm² copper at 40 °C, an assumption.",
     folded=True,
@@ -296,6 +297,15 @@ DIODE = Group(
             hint="A JSON list, as the API takes it; the page about the API has an example.",
         ),
         Field(
+            "in_hand",
+            "Parts in hand, as measured",
+            kind="area",
+            hint=(
+                "A JSON list such as [{“type”: “MBR1045”, “forward”: [{“current_a”: 5, “voltage_v”: 0.5}], “reverse”: "
+                "[{“bank_v”: 12.7, “meter_v”: 5}]}]: the drop at a current, the leakage through a 10 MΩ voltmeter."
+            ),
+        ),
+        Field(
             "earthing",
             "Earthing of the system",
             kind="choice",
@@ -306,13 +316,14 @@ DIODE = Group(
                     "floating": "neither pole earthed",
                 }
             ),
-            hint="Default: negative. Decides which lead the diode goes into.",
+            hint="Default: negative. Decides which lead the diode goes into, and where a live tab stands.",
         ),
         Field(
             "other_source_v",
-            "A second source (wind, hydro, generator) may lift the bank to",
+            "Second source: highest bank voltage",
             "V",
             placeholder="no other source",
+            hint="Wind, hydro or a generator on the same bank.",
         ),
         Field(
             "placement",
@@ -337,7 +348,13 @@ DIODE = Group(
         ),
         Field("box_day_c", "Air around it by day", "°C"),
         Field("box_night_c", "Air around it at night", "°C", placeholder="outside air"),
-        Field("box_area_m2", "Outer area of a closed box", "m²", hint="The diodes’ own heat then warms its air."),
+        Field(
+            "box_area_m2",
+            "Outer area of a closed box",
+            "m²",
+            placeholder="open",
+            hint="The diodes’ own heat then warms its air.",
+        ),
         Field(
             "heat_path",
             "How it is cooled",
@@ -346,7 +363,7 @@ DIODE = Group(
                 {
                     "as_packaged": "as its package usually is",
                     "free_air": "free air, no help",
-                    "pcb": "soldered to a board",
+                    "pcb": "soldered to a board like its data sheet’s",
                     "leads": "leads held cool",
                     "heatsink": "on a heatsink",
                     "stated": "stated resistance",
@@ -356,16 +373,18 @@ DIODE = Group(
         Field("sink_c_per_w", "Heatsink to air", "°C/W"),
         Field(
             "sink_quoted_rise_c",
-            "its figure is quoted at a rise of",
+            "Heatsink figure quoted at a rise of",
             "°C",
             placeholder="as it stands",
-            hint="Extrusions are quoted at about 75 °C; with less rise they carry less.",
+            hint="Extrusions are quoted at about 75 °C of rise; a smaller rise moves less air. Left empty: the figure "
+            "holds as it stands.",
         ),
         Field(
             "one_sink",
             "All diodes on one heatsink",
             kind="choice",
             choices=_one_of({"no": "no, one each", "yes": "yes, they share its rise"}),
+            hint="In positive leads their live tabs stand at one voltage; in negative leads insulate each.",
         ),
         Field("interface_c_per_w", "Case to heatsink", "°C/W", hint="Default 1 °C/W: an insulating pad."),
         Field("rth_c_per_w", "Junction to air, stated", "°C/W"),
@@ -399,4 +418,13 @@ LABELS = {field.name: field.label for group in OPEN_GROUPS + FOLDED_GROUPS for f
     "controller": "Charge controller",
     "blocks_at_night": "Blocks at night",
     "dark_current": "Estimated dark current",
+    "climate": "Source of the climate",
+    "kt_monthly": "Clearness index by month",
+    "night_reading_v": "Bank voltage of the night reading",
+    "night_reading_c": "Module temperature of the night reading",
+    "cable_awg": "Cable gauge",
+    "loop_ohm": "Resistance of the whole loop",
+    "sink_quoted_rise_c": "Rise at which the heatsink is quoted",
+    "other_source_v": "Second source",
+    "box_area_m2": "Outer area of the box",
 }

@@ -11,7 +11,15 @@ from server.web.fields import LABELS, Field, Group
 from server.web.refusals import Refusal
 from server.web.schemas import JobIn
 
-LIST_FIELDS = {"candidates", "own_diodes", "kt_monthly", "h_kwh_m2_monthly", "air_min_c_monthly", "air_max_c_monthly"}
+LIST_FIELDS = {
+    "candidates",
+    "own_diodes",
+    "in_hand",
+    "kt_monthly",
+    "h_kwh_m2_monthly",
+    "air_min_c_monthly",
+    "air_max_c_monthly",
+}
 
 # A site of our own invention; the figures are those of an ordinary 36-cell module of the 100 W class.
 DEMO = JobIn(

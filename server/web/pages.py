@@ -9,21 +9,33 @@ from starlette.responses import FileResponse, Response
 
 from server.errors import InputError, Overloaded
 from server.paths import asset_dir
+from server.physics import thermal
+from server.selection import faults, field_test, heating, ratings
 from server.selection.result import Candidate
-from server.web import charts, form, readings, refusals
-from server.web.api import catalog, desk_of
+from server.web import charts, form, refusals
+from server.web.api import desk_of
 from server.web.examples import EXAMPLES
 from server.web.fields import FOLDED_GROUPS, LABELS, OPEN_GROUPS
 from server.web.form import DEMO, DEMO_STORY, FormState
 from server.web.refusals import Refusal
 from server.web.schemas import JobIn, links_of
-from server.web.words import TECHNOLOGIES
 from server.web.work import Answer
 
 router = APIRouter(include_in_schema=False)
 
 SHOWN_FIRST = 8
 ON_SHEET = 7
+BOXES_ON_SHEET = 4  # strings whose readings find room
+LONGEST_PRINTED = 600  # characters of an address that anyone would type again
+# Rooms whose named constants the pages tell, so that no figure is written twice.
+CONSTANTS: dict[str, Any] = {
+    "faults": faults,
+    "field_test": field_test,
+    "heating": heating,
+    "ratings": ratings,
+    "thermal": thermal,
+}
+TOLD_APART_FRAC = 0.1  # two heatsink figures nearer than this are one
 
 
 @dataclass(frozen=True, slots=True)
@@ -38,7 +50,10 @@ class ResultView:
     failed: tuple[Candidate, ...]
     losses: charts.Losses
     day: charts.Day
-    readings: readings.Readings | None
+    sink_to_buy_c_per_w: float | None
+    """The choice's catalogue figure for a heatsink, where it is told apart from the one that is needed."""
+    bare_tab: bool
+    """Even the largest resistance that counts as a heatsink is cool enough."""
     needed_v: float | None
     needed_a: float | None
     """What any part in the place of the choice must be rated for."""
@@ -75,7 +90,8 @@ class ResultView:
                 [item for item in shown if item.key != "perfect-valve"], period, study.facts.periods[period]
             ),
             day=charts.day(study.day, with_diode=choice is not None and choice.part is not None),
-            readings=readings.of(answer.job, study),
+            sink_to_buy_c_per_w=_sink_to_buy(choice),
+            bare_tab=_bare_tab(choice),
             needed_v=_most(choice, "reverse_stress", "rule_voltage"),
             needed_a=_most(choice, "current"),
             page=links.page or "",
@@ -87,6 +103,18 @@ class ResultView:
 def _most(choice: Candidate | None, *codes: str) -> float | None:
     met = [check.met for check in choice.checks if check.code in codes and check.met is not None] if choice else []
     return max(met, default=None)
+
+
+def _bare_tab(choice: Candidate | None) -> bool:
+    needed = choice.sink_needed_c_per_w if choice else None
+    return needed is not None and needed >= (1.0 - TOLD_APART_FRAC) * heating.LARGEST_SINK_C_PER_W
+
+
+def _sink_to_buy(choice: Candidate | None) -> float | None:
+    needed, quoted = (choice.sink_needed_c_per_w, choice.sink_to_buy_c_per_w) if choice else (None, None)
+    if needed is None or quoted is None or abs(quoted - needed) <= TOLD_APART_FRAC * needed:
+        return None
+    return quoted
 
 
 def _render(request: Request, name: str, context: dict[str, Any], status: int = 200, wait_s: int = 0) -> Response:
@@ -140,30 +168,16 @@ async def _view_of_address(request: Request, template: str) -> Response:
     given, told = form.read_query(request.query_params)
     view, told, status, wait_s = await _answered(request, given, told)
     state = FormState(form.typed(request.query_params), tuple(told))
-    context = _form_context(state) | {"view": view, "today": datetime.now(UTC).date().isoformat(), "on_sheet": ON_SHEET}
+    room = {"on_sheet": ON_SHEET, "boxes": BOXES_ON_SHEET, "longest_address": LONGEST_PRINTED}
+    today = datetime.now(UTC).date().isoformat()
+    context = _form_context(state) | CONSTANTS | room | {"view": view, "today": today}
     return _render(request, template if view else "job.html", context, status, wait_s)
-
-
-@router.get("/diodes")
-async def diodes(request: Request) -> Response:
-    """The catalogue, by technology."""
-    found = await desk_of(request).run(catalog)
-    shelves = [
-        (title, [part for part in found.parts if part.technology == technology])
-        for technology, title in TECHNOLOGIES.items()
-    ]
-    context = {
-        "shelves": [shelf for shelf in shelves if shelf[1]],
-        "unfitted": found.unfitted,
-        "count": len(found.parts),
-    }
-    return _render(request, "diodes.html", context)
 
 
 @router.get("/method")
 async def method(request: Request) -> Response:
     """Laws, sources, accuracy, limits."""
-    return _render(request, "method.html", {})
+    return _render(request, "method.html", CONSTANTS)
 
 
 @router.get("/api")

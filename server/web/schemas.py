@@ -8,6 +8,7 @@ from pydantic import BaseModel, BeforeValidator, ConfigDict, Field
 
 from server.catalog import fit, parts
 from server.catalog.datasheet import ForwardPoint, ReversePoint
+from server.catalog.in_hand import ForwardReading, ReverseReading, refit, through_voltmeter
 from server.catalog.part import Part
 from server.errors import InputError
 from server.physics import wire
@@ -30,10 +31,15 @@ from server.selection.result import (
     Candidate,
     Caution,
     Check,
+    Crossover,
     DarkBand,
     DayTrace,
+    FaultStudy,
+    FieldTest,
     Ledger,
     Note,
+    ReverseHeat,
+    SecondSource,
     SiteFacts,
     Standing,
     Study,
@@ -248,6 +254,52 @@ class OwnDiodeIn(Strict):
         )
 
 
+class DropReadingIn(Strict):
+    """Read in hand: volts across the part at a current, its body at about `junction_c`."""
+
+    current_a: Number
+    voltage_v: Number
+    junction_c: Number = 25.0
+
+
+class LeakReadingIn(Strict):
+    """Read in hand: current at a reverse voltage, or what a voltmeter in series shows on a bank of `bank_v`."""
+
+    reverse_v: Optional = None
+    current_a: Optional = None
+    bank_v: Optional = None
+    meter_v: Optional = None
+    meter_ohm: Number = 10e6
+    junction_c: Number = 25.0
+
+    def to_reading(self, where: str) -> ReverseReading:
+        """The reading, whichever way it was taken. Raises InputError."""
+        if self.bank_v is not None and self.meter_v is not None:
+            return through_voltmeter(self.bank_v, self.meter_v, self.meter_ohm, self.junction_c)
+        if self.reverse_v is None or self.current_a is None:
+            raise InputError(where, "a leakage reading needs reverse_v and current_a, or bank_v and meter_v")
+        return ReverseReading(self.reverse_v, self.current_a, self.junction_c)
+
+
+class InHandIn(Strict):
+    """A catalogue type as measured with a multimeter: two to four readings shrink its band."""
+
+    type: Annotated[str, Field(min_length=1, max_length=60)]
+    forward: Annotated[list[DropReadingIn], Field(max_length=8)] = []
+    reverse: Annotated[list[LeakReadingIn], Field(max_length=8)] = []
+
+    def to_part(self, index: int) -> Part:
+        """The catalogue's part moved through the readings. Raises InputError naming the entry."""
+        where = f"in_hand[{index}]"
+        try:
+            leaks = [leak.to_reading("reverse") for leak in self.reverse]
+            drops = [ForwardReading(r.current_a, r.voltage_v, r.junction_c) for r in self.forward]
+            return refit(parts.part(self.type), drops, leaks)
+        except InputError as bad:
+            field = "type" if bad.field == "candidates" else bad.field
+            raise InputError(f"{where}.{field}", bad.sentence) from bad
+
+
 class SingleDiodeIn(Strict):
     """De Soto parameters of one module at STC, where they are known better than the label."""
 
@@ -347,6 +399,11 @@ class JobIn(Strict):
         Annotated[list[Annotated[str, Field(max_length=60)]], Field(max_length=200)] | None, BeforeValidator(_names)
     ] = None
     own_diodes: Annotated[list[OwnDiodeIn], BeforeValidator(_own), Field(max_length=20)] = []
+    in_hand: Annotated[
+        list[InHandIn],
+        BeforeValidator(_own),
+        Field(max_length=10, description="Catalogue types as measured: readings that refit them"),
+    ] = []
     legs: Literal["one", "both"] = "one"
     placement: Literal["per_string", "array"] = "per_string"
     earthing: Literal["negative", "positive", "floating"] = "negative"
@@ -531,6 +588,7 @@ class JobIn(Strict):
     def _parts(self) -> tuple[Part, ...]:
         """The types asked for (all of the catalogue where none is), then the job's own."""
         own = tuple(entry.to_part(index) for index, entry in enumerate(self.own_diodes))
+        own += tuple(entry.to_part(index) for index, entry in enumerate(self.in_hand))
         if self.candidates is None:
             return own if own else parts.load_parts()
         chosen = tuple(parts.part(name) for name in dict.fromkeys(self.candidates))
@@ -596,6 +654,8 @@ class CandidateOut(BaseModel):
     rth_c_per_w: float | None
     rth_origin: str
     sink_needed_c_per_w: float | None
+    sink_to_buy_c_per_w: float | None
+    reverse_heat: ReverseHeat | None
     tied: bool
     reasons: tuple[str, ...]
 
@@ -628,6 +688,10 @@ class StudyOut(BaseModel):
     warnings: tuple[Note, ...]
     assumptions: tuple[Assumption, ...]
     audit: Audit
+    faults: FaultStudy
+    field_test: FieldTest | None
+    second_source: SecondSource | None
+    crossover: Crossover | None
     day: DayTrace
     links: LinksOut
 
@@ -648,7 +712,7 @@ def query_of(given: JobIn) -> str:
     """The job as a query string, as short as it can be: no defaults, lists as text, records as JSON."""
     pairs = []
     for name, value in given.model_dump(mode="json", exclude_unset=True, exclude_defaults=True).items():
-        if name in ("own_diodes", "single_diode"):
+        if name in ("own_diodes", "in_hand", "single_diode"):
             value = json.dumps(value, separators=(",", ":"))
         elif isinstance(value, list):
             value = (", " if name == "candidates" else " ").join(str(piece) for piece in value)

@@ -3,9 +3,13 @@
 import math
 from collections.abc import Callable
 
+from server.selection.result import FaultCase
+
 DASH = "–"
 NO_NUMBER = "—"
 HOTTEST_TOLD_C = 300.0
+# The last digit of a 3½-digit meter on its 200 mV range, and of an ordinary DC clamp (common practice).
+METER_DIGIT_V, CLAMP_DIGIT_A = 1e-4, 0.01
 
 STANDINGS = {
     "pass": "fits",
@@ -25,6 +29,7 @@ TECHNOLOGIES = {
     "active": "active rectifier",
     "reference": "reference",
 }
+FAULT_OUTCOMES = {"pass": "within it", "marginal": "tight", "fail": "beyond it", "info": "not judged"}
 REFERENCES = {"case": "case", "lead": "lead", "ambient": "air"}
 SOURCES = {
     "read": "source read",
@@ -40,7 +45,7 @@ def fig(value: float | None, digits: int = 3) -> str:
         return NO_NUMBER
     if value == 0:
         return "0"
-    exponent = math.floor(math.log10(abs(value)))
+    exponent = int(f"{value:.{digits - 1}e}".split("e")[1])  # of the rounded number: 0.9996 is 1.00
     if exponent < -9:
         return "0"
     places = max(0, digits - 1 - exponent)
@@ -76,6 +81,25 @@ def milli_span(low: float | None, high: float | None, digits: int = 2) -> str:
     return _span(milli(low, digits), milli(high, digits))
 
 
+def small(value: float | None, unit: str, digits: int = 2) -> str:
+    """A value in the unit a meter would show it in: 221 A, 8.5 mA, 67 µV."""
+    if value is None or not math.isfinite(value) or value == 0:
+        return f"{fig(value, digits)} {unit}"
+    size = abs(value)
+    if size >= 0.9995:
+        return f"{fig(value, max(digits, 3))} {unit}"
+    return f"{fig(1e3 * value, digits)} m{unit}" if size >= 0.9995e-3 else f"{fig(1e6 * value, digits)} µ{unit}"
+
+
+def small_span(low: float, high: float, unit: str, digits: int = 2) -> str:
+    """Two values in the units a meter would show them in; the unit once where they share it."""
+    first, last = small(low, unit, digits), small(high, unit, digits)
+    if first == last:
+        return first
+    number, of_first = first.rsplit(" ", 1)
+    return f"{number}{DASH}{last}" if of_first == last.rsplit(" ", 1)[1] else f"{first} to {last}"
+
+
 def span(low: float | None, high: float | None, digits: int = 2) -> str:
     """Two values, once where they print alike."""
     return _span(fig(low, digits), fig(high, digits))
@@ -88,6 +112,18 @@ def _span(first: str, last: str) -> str:
 def junction(value: float | None) -> str:
     """A junction temperature; beyond what any part survives the number means nothing."""
     return f"over {HOTTEST_TOLD_C:g}" if value is not None and value > HOTTEST_TOLD_C else fixed(value, 0)
+
+
+def fault(case: FaultCase) -> str:
+    """How a fault's current stands to what is allowed."""
+    if case.code == "diode_shorted":
+        return "silent"
+    if case.outcome == "info":
+        # Nothing to hold it against; where not even a bare string takes anything, nothing need be.
+        return "nothing flows" if case.without_a == 0 and not case.maximum_a else FAULT_OUTCOMES["info"]
+    if case.outcome == "fail" and (case.allowed_a is None or case.without_a is None):
+        return "not limited"
+    return FAULT_OUTCOMES[case.outcome]
 
 
 def percent(value: float | None, places: int = 0) -> str:
@@ -106,6 +142,7 @@ FILTERS: dict[str, Callable[..., str]] = {
     "given": given,
     "tiny": tiny,
     "milli": milli,
+    "small": small,
     "percent": percent,
     "plain": plain,
 }

@@ -79,6 +79,57 @@ async def test_numbers_that_do_not_exist_are_null(client, job):
     assert all(math.isfinite(x) for x in every_number(answer.json()))
 
 
+async def test_faults_and_readings_after_fitting_are_told(client, job):
+    asked = {**job, "candidates": ["10SQ050"], "loop_ohm": 0.1, "battery_absorption_v": 14.4, "other_source_v": 15.5}
+    told = (await client.post("/api/v1/job", json=asked)).json()
+    cases = {(case["code"], case["bus"]): case for case in told["faults"]["cases"]}
+    # Ohm's law: 14.4 V through 0.1 ohm. One string has no other to feed it. Nothing is given to hold it against.
+    shorted = cases["string_shorted", "bank connected"]
+    assert shorted["without_a"] == pytest.approx(144)
+    assert shorted["maximum_a"] < 0.1
+    assert shorted["allowed_a"] is None
+    assert cases["string_shorted", "bank disconnected"]["without_a"] == 0
+    assert told["faults"]["fuse_window_a"] == pytest.approx([1.4 * 5.9, 2.4 * 5.9])
+    # Ohm's law again, and ten turns through a clamp.
+    test = told["field_test"]
+    assert test["shunt_ohm"] == [0.1, 1.0]
+    assert test["shunt_pass_v"] == pytest.approx([0.1 * test["pass_below_a"], test["pass_below_a"]])
+    assert test["clamp_pass_a"] == pytest.approx(10 * test["pass_below_a"])
+    assert [one["code"] for one in test["night"]] == ["designed", "shorted", "reversed", "none"]
+    assert [one["current_a"] for one in test["day"]] == pytest.approx([5.5 / 4, 5.5 / 2, 5.5])
+    source = told["second_source"]
+    assert source["bus_v"] == 15.5
+    assert source["typical_a"] <= source["maximum_a"] <= source["without_a"]
+
+
+async def test_faults_readings_and_heat_that_do_not_exist_are_null(client, job):
+    bare = {**job, "loop_ohm": 0.0, "cable_one_way_m": None, "cable_mm2": None}
+    told = (await client.post("/api/v1/job", json={k: v for k, v in bare.items() if v is not None})).json()
+    assert told["second_source"] is None
+    case = next(one for one in told["faults"]["cases"] if one["code"] == "string_shorted")
+    assert case["without_a"] is None  # nothing holds a short back where there is no cable
+    by_key = {item["key"]: item for item in told["candidates"]}
+    assert by_key["none"]["reverse_heat"] is None
+    assert by_key["none"]["sink_to_buy_c_per_w"] is None
+    # A part so leaky that it heats itself past any limit in air of 110 °C; without it a shunt regulator is not safe.
+    leaky = {
+        "name": "leaky",
+        "technology": "schottky",
+        "vrrm_v": 45,
+        "forward": [{"current_a": 1, "voltage_v": 0.3}, {"current_a": 15, "voltage_v": 0.45}],
+        "reverse": [{"reverse_v": 45, "current_a": 1e-3}, {"reverse_v": 45, "current_a": 0.1, "junction_c": 100}],
+        "rth_ja_c_per_w": 60,
+    }
+    cooked = {**job, "candidates": [], "own_diodes": [leaky], "box": "stated", "box_day_c": 110}
+    told = (await client.post("/api/v1/job", json=cooked)).json()
+    assert told["verdict"]["kind"] == "nothing_safe"
+    assert told["field_test"] is None
+    heat = next(item["reverse_heat"] for item in told["candidates"] if item["title"] == "leaky")
+    assert heat["stable_typical_c"] is None
+    assert heat["tipping_typical_c"] is None
+    assert heat["critical_ambient_typical_c"] < 110
+
+
 async def test_the_catalogue_is_told_whole_with_sources_and_what_was_left_out(client):
     told = (await client.get("/api/v1/diodes")).json()
     assert told == (await client.get("/diodes.json")).json()
@@ -93,7 +144,14 @@ async def test_the_catalogue_is_told_whole_with_sources_and_what_was_left_out(cl
 async def test_the_description_for_programs_names_every_address(client):
     told = (await client.get("/api/openapi.json")).json()
     assert {"/api/v1/job", "/api/v1/loop", "/api/v1/diodes", "/job.json", "/healthz"} == set(told["paths"])
-    assert "JobIn" in told["components"]["schemas"]
+    schemas = told["components"]["schemas"]
+    assert {"JobIn", "FaultStudy", "FaultCase", "FieldTest", "NightWindow", "DropReading"} <= set(schemas)
+    answer = schemas["StudyOut"]
+    assert {"faults", "field_test", "second_source"} <= set(answer["required"])
+    for name, record in (("field_test", "FieldTest"), ("second_source", "SecondSource")):
+        kinds = answer["properties"][name]["anyOf"]
+        assert kinds == [{"$ref": f"#/components/schemas/{record}"}, {"type": "null"}]
+    assert {"sink_to_buy_c_per_w", "reverse_heat"} <= set(schemas["CandidateOut"]["required"])
 
 
 async def test_the_examples_on_the_page_about_the_api_work(client):

@@ -1,11 +1,14 @@
+import html
 import re
 
 import pytest
+from worked_jobs import cabin, repeater
 
+from server.web import words
 from server.web.app import create_app
 from server.web.fields import FOLDED_GROUPS, OPEN_GROUPS
 from server.web.guard import SECURITY_HEADERS
-from server.web.schemas import JobIn
+from server.web.schemas import JobIn, links_of
 
 pytestmark = pytest.mark.anyio
 
@@ -79,7 +82,7 @@ async def test_the_sheet_says_what_to_fit_where_and_what_to_read(client, query):
     page = await client.get("/sheet", params=query)
     assert page.status_code == 200
     assert_whole_page(page.text)
-    for words in (
+    for phrase in (
         "anode to the array, band to the battery",
         "positive lead",
         "Fuse:",
@@ -87,7 +90,105 @@ async def test_the_sheet_says_what_to_fit_where_and_what_to_read(client, query):
         "mA",
         "/job?",
     ):
-        assert words in page.text
+        assert phrase in page.text
+
+
+def words_of(page):
+    """What a reader sees, markup and line ends aside."""
+    return " ".join(html.unescape(re.sub(r"<[^>]+>", " ", page.text)).split())
+
+
+async def test_faults_stand_on_the_page_with_what_is_allowed_and_an_outcome_in_words(client):
+    job = JobIn(**repeater(max_series_fuse_a=20, cable_ampacity_a=30))
+    page = await client.get(links_of(job).page)
+    text = words_of(page)
+    told = (await client.get(links_of(job).json_)).json()["faults"]
+    for case in told["cases"]:
+        assert case["title"] in text
+        assert case["bus"] in text
+        assert case["sentence"][1:] in text
+    assert "Held against 20 A" in text
+    # three strings push 3 × 1.25 × 9.8 A into a dead one; behind a sound diode that is within 20 A
+    assert re.search(r" 36\.8 A [\d.]+–[\d.]+ µA 20 A ● within it", text)
+    assert "✕ not limited" in text
+    for sentence in (told["fuse_sentence"], told["battery_fuse_sentence"], told["last_word"]):
+        assert sentence[1:] in text
+
+
+async def test_without_a_diode_the_faults_are_judged_bare(client):
+    job = JobIn(**cabin(max_series_fuse_a=10))
+    page = await client.get(links_of(job).page)
+    assert "With the choice" not in page.text
+    assert "✕ beyond it" in words_of(page)  # the other string pushes 1.25 × 9.8 A past 10 A
+    assert "Held against 10 A" in words_of(page)
+
+
+async def test_page_and_sheet_print_the_limits_that_a_reading_must_pass(client):
+    job = JobIn(**repeater())
+    links = links_of(job)
+    test = (await client.get(links.json_)).json()["field_test"]
+    page, sheet = await client.get(links.page), await client.get(links.sheet)
+    for text in (words_of(page), words_of(sheet)):
+        assert f"{words.milli(test['pass_below_a'])} mA" in text
+        for volts in test["shunt_pass_v"]:
+            assert f"{words.milli(volts)} mV" in text
+        assert f"{words.milli(test['clamp_pass_a'])} mA" in text
+        assert "10 MΩ voltmeter" in text
+        for one in test["day"]:
+            assert f"{words.fig(one['low_v'], 2)}–{words.fig(one['high_v'], 2)} V" in text
+    assert sheet.text.count('class="box"') == 4 * (1 + 2 + 1 + 3 + 1 + 1)  # four strings; the windows need no box
+
+
+async def test_where_windows_are_too_near_the_day_is_named_instead(client, query):
+    # In a hot night this low drop leaks as much as a bare string takes at the least.
+    near = {**query, "candidates": "MBR4045WT", "night_air_c": "60"}
+    test = (await client.get("/job.json", params=near)).json()["field_test"]
+    assert test["pass_below_a"] is None
+    for path in ("/job", "/sheet"):
+        text = words_of(await client.get(path, params=near))
+        assert "too near" in text
+        assert "0 V across it" in text
+
+
+async def test_the_catalogue_figure_of_a_heatsink_is_told_where_it_differs_by_a_tenth(client, query):
+    # Four strings in hot air leave their sinks little rise; one part in mild air has all the rise it likes.
+    near = {**query, "candidates": "MBR4045WT"}
+    for address, params, differs in ((links_of(JobIn(**repeater())), None, True), (None, near, False)):
+        page, sheet, told = [
+            await client.get(getattr(address, name) if address else path, params=params)
+            for name, path in (("page", "/job"), ("sheet", "/sheet"), ("json_", "/job.json"))
+        ]
+        choice = next(c for c in told.json()["candidates"] if c["key"] == told.json()["verdict"]["choice"])
+        needed, quoted = choice["sink_needed_c_per_w"], choice["sink_to_buy_c_per_w"]
+        assert (abs(quoted - needed) > 0.1 * needed) == differs
+        assert ("buy one of" in words_of(page)) == differs
+        assert ("in a catalogue" in words_of(sheet)) == differs
+
+
+async def test_a_part_that_needs_no_heatsink_is_not_sold_one(client, query):
+    cool = {**query, "candidates": "LM74700-Q1 + IRFP4310Z", "controller": "series"}
+    assert "It needs no heatsink" in words_of(await client.get("/job", params=cool))
+    sheet = words_of(await client.get("/sheet", params=cool))
+    assert "no heatsink is needed" in sheet
+    assert "heatsink of at most" not in sheet
+
+
+async def test_heat_in_reverse_and_a_second_source_are_told(client, query):
+    page = words_of(await client.get("/job", params={**query, "other_source_v": "15.5"}))
+    assert "Reversed while hot" in page
+    assert "No stable point in air hotter than" in page
+    assert "Second source. At 15.5 V by night" in page
+    assert "a second source, up to 15.5 V" in words_of(
+        await client.get("/sheet", params={**query, "other_source_v": "15.5"})
+    )
+
+
+@pytest.mark.parametrize(
+    ("value", "shown"),
+    [(221.2, "221 A"), (0.99996, "1.00 A"), (0.0085, "8.5 mA"), (0.00099999, "1.0 mA"), (6.7e-5, "67 µA"), (0, "0 A")],
+)
+def test_a_small_current_is_told_in_the_unit_a_meter_shows(value, shown):
+    assert words.small(value, "A") == shown
 
 
 async def test_head_is_get_without_a_body(client):

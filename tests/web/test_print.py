@@ -8,12 +8,15 @@ from worked_jobs import CLASSES, cabin, launch, repeater, skiff
 from server.web.form import DEMO
 from server.web.schemas import JobIn, links_of
 
+# Whatever makes the sheet say more: strings to fuse, an unknown controller, an active rectifier to choose, a turbine.
+LONG = {"chemistry": "lifepo4", "controller": "series", "strings": 12, "other_source_v": 15, "box": "engine_room"}
 JOBS = {
     "the worked example": DEMO,
     "four strings, 48 V, positive earth": JobIn(**repeater(earthing="positive")),
     "two strings behind a converter, none to fit": JobIn(**cabin()),
     "nothing safe": JobIn(**launch(box_day_c=65, rth_c_per_w=28, own_diodes=[CLASSES["S45"]])),
     "a second source": JobIn(**skiff(other_source_v=15.5)),
+    "the longest words": JobIn(**{**DEMO.model_dump(exclude_unset=True), **LONG}),
 }
 # ISO 216 and ANSI/ASME Y14.1, in points of 1/72 inch.
 PAPERS = {"A4": (210 / 25.4 * 72, 297 / 25.4 * 72), "Letter": (8.5 * 72, 11 * 72)}
