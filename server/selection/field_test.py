@@ -59,7 +59,7 @@ def _trap_words(trap_v: float | None, bank_v: float) -> str:
         return f"a voltmeter alone tells nothing of a diode, whose leakage may be less than the meter takes: {how}"
     return (
         f"a 10 MΩ voltmeter on the panel side, the panel disconnected, shows {figure(trap_v, 3)} V of "
-        f"{figure(bank_v, 3)} V through a sound diode, for the meter's own microampere is all the leakage it needs: {how}"
+        f"{figure(bank_v, 3)} V through a sound diode, for the meter's microampere is all the leakage it needs: {how}"
     )
 
 
