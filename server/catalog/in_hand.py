@@ -122,9 +122,8 @@ def _forward_shift(law: JunctionLaw, readings: Sequence[ForwardReading]) -> tupl
     if abs(shift) > MOST_SHIFT_V:
         raise InputError(
             "forward",
-            f"the readings lie {shift:+.2f} V off this type's drop, more than {MOST_SHIFT_V:g} V; it is another "
-            "part, or the "
-            "meter's diode range was read, which drives about 1 mA",
+            f"the readings lie {shift:+.2f} V off this type's drop, more than {MOST_SHIFT_V:g} V; it is another part, "
+            "or the meter's diode range was read, which drives about 1 mA",
         )
     return float(shift), float(ohm)
 

@@ -51,8 +51,7 @@ def _over_30_v(s: Situation) -> str | None:
     text = (
         "Never pull a connector, fuse or diode lead while current flows: a DC arc does not go out by itself. Open the "
         "rated DC disconnect or cover the array, then prove zero current with a clamp meter. In daylight the array "
-        "side "
-        "is live with every switch open."
+        "side is live with every switch open."
     )
     return text + (f" This string reaches {volts:.0f} V." if volts > 30 else "")
 
@@ -62,9 +61,8 @@ def _touch(s: Situation) -> str | None:
     if check is None or check.met is None:
         return None
     return (
-        f"The diode's case may reach {check.met:.0f} °C on every sunny day: mount it on something that does not "
-        "burn, with "
-        "clearance, out of reach or guarded."
+        f"The diode's case is hot every sunny hour, and may reach {check.met:.0f} °C on the worst day: mount it on "
+        "something that does not burn, with clearance, out of reach or guarded."
     )
 
 
@@ -111,14 +109,12 @@ def _fed_fault(s: Situation) -> str | None:
         return None
     if s.fits_part:
         return (
-            "Once a diode has failed short, a chafed cable or a shorted module behind it is fed by the bank: the "
-            "fuse at the "
-            "battery protects the cable, and must not exceed what the modules allow."
+            "Once a diode has failed short, a chafed cable or a shorted module behind it is fed by the bank: the fuse "
+            "at the battery protects the cable, and must not exceed what the modules allow."
         )
     return (
         "Without a diode a chafed cable or a shorted module is fed by the bank. The fuse at the battery is what "
-        "protects the "
-        "cable; a diode at the battery's end would keep the bank out of a short on the roof run."
+        "protects the cable; a diode at the battery's end would keep the bank out of a short on the roof run."
     )
 
 
@@ -129,13 +125,11 @@ def _no_regulator(s: Situation) -> str | None:
     if check.outcome == "info":
         return (
             "Nothing stops the charge when the bank is full. Without a regulator the largest charge current in one "
-            "hour must "
-            "stay below 3 % of the bank's Ah, which are not given here."
+            "hour must stay below 3 % of the bank's Ah, which are not given here."
         )
     return (
         "Nothing stops the charge when the bank is full. This array is too strong for the bank to go without a "
-        "regulator: "
-        "expect overcharge, water loss and heat."
+        "regulator: expect overcharge, water loss and heat."
     )
 
 
@@ -152,8 +146,8 @@ RULES: Sequence[tuple[str, str, str, Say]] = (
         "NEC 2017 690.9, read",
         _always(
             "A bank feeds a short with hundreds to thousands of amperes. Put a fuse or breaker with enough DC "
-            "interrupting "
-            "rating within reach of the battery terminal; it protects the cable, which no diode does."
+            "interrupting rating within reach of the battery terminal, in the conductor that is not earthed: it "
+            "protects the cable, which no diode does."
         ),
     ),
     (
@@ -163,10 +157,8 @@ RULES: Sequence[tuple[str, str, str, Say]] = (
         _when(
             lambda s: s.fits_part,
             "The diode is not overcurrent protection, not a disconnect and not a charge regulator. Overheated, it "
-            "usually "
-            "fails short: charging looks perfect and the night drain is back. Measure the night current after "
-            "fitting and "
-            "once a year.",
+            "usually fails short: charging looks perfect and the night drain is back. Measure the night current after "
+            "fitting and once a year.",
         ),
     ),
     (
@@ -187,8 +179,7 @@ RULES: Sequence[tuple[str, str, str, Say]] = (
         _when(
             lambda s: s.job.charge.controller == "shunt",
             "When the bank is full this regulator shorts the panel: the series diode then stands hot under battery "
-            "voltage "
-            "in reverse. Leave it out or let it fail short, and the regulator shorts the bank.",
+            "voltage in reverse. Leave it out or let it fail short, and the regulator shorts the bank.",
         ),
     ),
     (
@@ -197,9 +188,8 @@ RULES: Sequence[tuple[str, str, str, Say]] = (
         "common practice",
         _when(
             lambda s: s.fits_part and s.choice is not None and s.choice.technology == "active",
-            "An active rectifier turns off only after a little current has flowed backward, and draws its own "
-            "supply. Ask "
-            "its maker about a shorted panel, and check its absolute maximum voltage against the coldest string.",
+            "An active rectifier turns off only after a little current has flowed backward, and draws its own supply. "
+            "Ask its maker about a shorted panel, and check its absolute maximum voltage against the coldest string.",
         ),
     ),
     ("fed_fault", "The bank feeds a fault", "arithmetic", _fed_fault),
@@ -224,8 +214,7 @@ RULES: Sequence[tuple[str, str, str, Say]] = (
         _when(
             lambda s: s.fits_part and s.job.heat.box == "junction_box",
             "The module's sealed box was made for diodes that hardly ever conduct. A blocking diode heats it every "
-            "sunny "
-            "hour: place it in a shaded, ventilated box.",
+            "sunny hour: place it in a shaded, ventilated box.",
         ),
     ),
     (
@@ -234,9 +223,8 @@ RULES: Sequence[tuple[str, str, str, Say]] = (
         "negative VF slope, arithmetic",
         _when(
             lambda s: s.fits_part and (s.job.array.strings > 1 or s.job.legs == "both"),
-            "The warmer of two diodes takes more of the current: use one chip per string, or one larger part. Only "
-            "the two "
-            "dies of one package share a temperature.",
+            "The warmer of two diodes takes more of the current: use one chip per string, or one larger part. Only the "
+            "two dies of one package share a temperature.",
         ),
     ),
     (
@@ -246,8 +234,7 @@ RULES: Sequence[tuple[str, str, str, Say]] = (
         _when(
             lambda s: s.job.charge.controller in ("series", "mppt"),
             "Many controllers of this family block by themselves: read the manual. Never put the diode between "
-            "controller "
-            "and battery, where it falsifies the battery voltage that the controller sees.",
+            "controller and battery, where it falsifies the battery voltage that the controller sees.",
         ),
     ),
     (
@@ -267,9 +254,8 @@ RULES: Sequence[tuple[str, str, str, Say]] = (
         "Yordanov, Solar Energy (2015), read in abstract",
         _when(
             lambda s: s.fits_part,
-            "Cloud edges, snow and altitude lift the current to 1.25 × Isc for long and 1.6 × for seconds: do not "
-            "size on "
-            "Imp.",
+            "Cloud edges, snow and altitude lift the current to 1.25 × Isc for long and 1.6 × for seconds: do not size "
+            "on Imp.",
         ),
     ),
     (

@@ -65,9 +65,9 @@ def _words(rival: str, typical: float | None, maximum: float | None) -> str:
     if typical is None and maximum is None:
         return f"up to nights of {HOTTEST_C:.0f} °C its leakage never eats what it saves by day against {rival}"
 
-    def at(value: float | None) -> str:
+    def nights(value: float | None) -> str:
         if value is None:
-            return f"above {HOTTEST_C:.0f} °C"
-        return f"about {figure(round(value), 3)} °C" if value > COLDEST_C else "any temperature"
+            return f"never up to nights of {HOTTEST_C:.0f} °C"
+        return f"on nights warmer than about {figure(round(value), 3)} °C" if value > COLDEST_C else "on any night"
 
-    return f"{rival} overtakes it at nights of {at(typical)} with typical parts, {at(maximum)} with maximum ones"
+    return f"{rival} overtakes it {nights(typical)} with typical parts, {nights(maximum)} with maximum ones"

@@ -28,6 +28,19 @@ SHADE_W_M2 = 100.0  # diffuse light on a shaded string
 FUSE_FLOOR, FUSE_CEILING = 1.4, 2.4
 
 
+def _battery_fuse_words(job: Job) -> str:
+    """Where the bank's own fuse goes: the unearthed conductor, at the end that can feed the most."""
+    pole = {
+        "negative": "in the positive conductor",
+        "positive": "in the negative conductor",
+        "floating": "in both poles",
+    }
+    return (
+        "the bank is the stronger source, so its fuse sits within reach of its terminal, at the battery end of the "
+        f"cable, {pole[job.earthing]}" + ("" if job.earthing == "floating" else ", the one that is not earthed")
+    )
+
+
 @dataclass(frozen=True, slots=True)
 class _Place:
     """What every case starts from."""
@@ -93,9 +106,8 @@ def fault_study(
     ceiling = FUSE_CEILING * isc if rating is None else min(FUSE_CEILING * isc, rating)
     window = (FUSE_FLOOR * isc, ceiling)
     text = (
-        f"a string fuse lies between {window[0]:.1f} and {window[1]:.1f} A: {FUSE_FLOOR:g} to {FUSE_CEILING:g} × "
-        "Isc, the "
-        "widest range of the texts read (1.4 to 2 × in a textbook, 1.5, 1.56 or 1.8 × up to 2 or 2.4 × in manuals)"
+        f"a string fuse lies between {window[0]:.1f} and {window[1]:.1f} A: {FUSE_FLOOR:g} to {FUSE_CEILING:g} × Isc, "
+        "the widest range of the texts read (1.4 to 2 × in a textbook, 1.5, 1.56 or 1.8 × up to 2 or 2.4 × in manuals)"
         + ("" if rating is None else f", and not above the module's {rating:g} A")
     )
     if window[0] > window[1]:
@@ -104,10 +116,9 @@ def fault_study(
         tuple(cases),
         window,
         text,
-        "the bank is the stronger source, so its fuse sits within reach of its terminal, at the battery end of the "
-        "cable",
-        "A blocking diode is not overcurrent protection: it usually fails short, and then every figure without a "
-        "diode holds.",
+        _battery_fuse_words(job),
+        "A blocking diode is not overcurrent protection: it usually fails short, and then every figure without a diode "
+        "holds.",
     )
 
 
@@ -238,8 +249,7 @@ def _shorted_diode(none: Candidate, strings: int) -> FaultCase:
     """The usual end of an overheated diode, and a silent one. The currents are one bare string's by night."""
     text = (
         "charging looks perfect and by night the drain of the bare string is back; every case above then stands as "
-        "without "
-        "a diode. Only a night reading shows it"
+        "without a diode. Only a night reading shows it"
     )
     _, middle, high = (x / strings for x in none.dark_typical.night_a)
     return FaultCase(

@@ -70,9 +70,8 @@ class ClimateChoice:
         if self.source == "stated_day" and self.dark_days_per_month > 0:
             raise InputError(
                 "dark_days_per_month",
-                f"{self.dark_days_per_month:g} days do not go with one stated day, which stands for every day; "
-                "choose a "
-                "climate by month, or 0",
+                f"{self.dark_days_per_month:g} days do not go with one stated day, which stands for every day; choose "
+                "a climate by month, or 0",
             )
         for name in ("record_low_c", "record_high_c"):
             value = getattr(self, name)
@@ -159,8 +158,7 @@ class Charge:
             raise InputError(
                 "blocks_at_night",
                 "a regulator that shorts the panel cannot block by itself: what blocks is the series diode in "
-                "question; "
-                "answer no or unknown",
+                "question; answer no or unknown",
             )
 
 

@@ -38,8 +38,8 @@ def notes_on(
             Note(
                 "blocking_unknown",
                 "whether the controller blocks at night is unknown: the string's drain is given as if it did not. If "
-                "it does, "
-                f"that drain is zero for every candidate, and no diode is best, with up to {net_ah:.2f} Ah a day net",
+                f"it does, that drain is zero for every candidate, and no diode is best, with up to {net_ah:.2f} Ah a "
+                "day net",
             )
         )
     if job.charge.controller == "shunt" and choice is not None and choice.part is not None:
@@ -64,9 +64,8 @@ def _shunted_note(job: Job, choice: Candidate) -> Note:
     low, high = (float(x) for x in leaks)
     return Note(
         "shunted_leak",
-        f"while the regulator shorts the panel the hot diode leaks {milli(low)} to {milli(high)} back at worst; "
-        "these minutes "
-        "are not in the ledger",
+        f"while the regulator shorts the panel the hot diode leaks {milli(low)} to {milli(high)} back at worst; these "
+        "minutes are not in the ledger",
     )
 
 

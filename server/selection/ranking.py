@@ -185,8 +185,7 @@ def _none_sentence(facts: SiteFacts, none: Candidate, ranked: Sequence[Candidate
         return f"Fit none: {taken}, less than any candidate's drop costs by day ({month})."
     return (
         f"Fit none for now: {taken} ({month}); {best.title} would save most of it but is {_standing_words(best)}, so "
-        "look for "
-        "a part or a place with more margin."
+        "look for a part or a place with more margin."
     )
 
 

@@ -199,9 +199,8 @@ def part_checks(part: Part, job: Job, worst: Worst, hot: HotPart) -> tuple[Check
                 "A",
                 f"IFSM at or above {BURST_FACTOR:g} × Isc",
                 "read",
-                f"bursts of {BURST_FACTOR:g} kW/m² give {burst:.1f} A for seconds; one half-sine of {part.ifsm_a:g} "
-                "A, some 8 ms "
-                "long, is the least that must stand above it",
+                f"bursts of {BURST_FACTOR:g} kW/m² give {burst:.1f} A for seconds; one half-sine of {part.ifsm_a:g} A, "
+                "some 8 ms long, is the least that must stand above it",
             )
         )
     checks.append(headroom_check(job, worst, hot.usual_drop_v))
@@ -247,9 +246,8 @@ def _junction_check(part: Part, job: Job, worst: Worst, hot: HotPart) -> Check:
             outcome = "fail"
         if outcome == "fail":
             text = (
-                f"no practical heatsink holds {limit:g} °C: {path.power_w:.1f} W in air of {worst.box_c:.0f} °C "
-                "would need "
-                f"{needed:.1f} °C/W"
+                f"no practical heatsink holds {limit:g} °C: {path.power_w:.1f} W in air of {worst.box_c:.0f} °C would "
+                f"need {needed:.1f} °C/W"
             )
         else:
             text = (
@@ -401,8 +399,8 @@ def site_checks(job: Job) -> tuple[Check, ...]:
     elif fuse is None:
         text = (
             f"{strings - 1} strings can push {met:.1f} A into a faulty one: fuse every string unless 1.35 × the "
-            "maximum series "
-            "fuse on the label, which is not given, is more than that; the diode is not overcurrent protection"
+            "maximum series fuse on the label, which is not given, is more than that; the diode is not overcurrent "
+            "protection"
         )
         checks.append(Check("string_fuse", title, met, None, "A", None, "marginal", rule, "read", text))
     else:

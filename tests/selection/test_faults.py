@@ -174,3 +174,17 @@ def test_a_second_source_raises_drain_and_stress():
     assert source.without_a > plain.candidate("none").dark_typical.night_a[1]
     assert source.typical_a <= source.maximum_a < source.without_a
     assert windy.facts.reverse_stress_v == 17.0 > plain.facts.reverse_stress_v
+
+
+@pytest.mark.parametrize(
+    ("earthing", "words"), [("negative", "positive conductor"), ("positive", "negative conductor")]
+)
+def test_the_battery_fuse_stands_in_the_conductor_that_is_not_earthed(earthing, words):
+    assert words in answer(launch(earthing=earthing)).faults.battery_fuse_sentence
+
+
+def test_behind_a_controller_that_blocks_the_bank_feeds_no_fault_of_the_array():
+    cases = answer(cabin()).faults.cases
+    assert {c.bus for c in cases if c.code in ("string_shorted", "module_shorted", "string_shaded")} == {
+        "bank disconnected"
+    }
