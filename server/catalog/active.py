@@ -94,6 +94,9 @@ def _pair(types: Sequence[DiodeType], controller_name: str, switch_name: str) ->
         turnoff_v = 0.0
         assumed.append("reverse turn-off threshold is not printed: 0 mV stands for it")
 
+    if supply_typ_a > 0:
+        assumed.append("its supply is counted as drawn from the bank day and night, the unfavourable case")
+
     def law(rds_ohm: float, leakage: tuple[float, float], supply_a: float) -> ActiveLaw:
         return ActiveLaw(
             regulated_v=regulated_v,

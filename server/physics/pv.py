@@ -43,6 +43,9 @@ CLASS_COEFFICIENTS: dict[CellType, tuple[float, float, float]] = {
 # Cells in series that modules are made with (from memory); the nearest by Voc serves where the label prints none.
 COMMON_CELL_COUNTS = (9, 10, 12, 18, 20, 24, 30, 32, 33, 36, 40, 44, 48, 54, 60, 66, 72, 78, 80, 96)
 OPEN_V_PER_CELL: dict[CellType, float] = {"mono": 0.63, "poly": 0.615, "heterojunction": 0.73, "thin_film": 0.85}
+# Bounds against a wrong count: half-cut cells counted twice below, the best wafer cells and stacked thin films above.
+LEAST_OPEN_V_PER_CELL = 0.25
+MOST_OPEN_V_PER_CELL: dict[CellType, float] = {"mono": 0.8, "poly": 0.8, "heterojunction": 0.85, "thin_film": 3.0}
 
 
 def _check(field: str, value: float, low: float, high: float, unit: str) -> None:
@@ -110,8 +113,9 @@ class ModuleLabel:
         if self.cells is not None:
             _check("cells", self.cells, 1, 1000, "cells")
             per_cell = self.voc_v / self.cells
-            if not 0.25 <= per_cell <= 3.0:
-                low, high = math.ceil(self.voc_v / 3.0), math.floor(self.voc_v / 0.25)
+            least, most = LEAST_OPEN_V_PER_CELL, MOST_OPEN_V_PER_CELL[self.cell_type]
+            if not least <= per_cell <= most:
+                low, high = math.ceil(self.voc_v / most), math.floor(self.voc_v / least)
                 raise InputError("cells", f"{self.cells} cells do not fit {self.voc_v:g} V; expected {low} to {high}")
 
     @property

@@ -97,6 +97,18 @@ def _string_fuse(s: Situation) -> str | None:
     return f"With {s.job.array.strings} strings, {check.sentence}. A blocking diode is no substitute: it fails short."
 
 
+def _controller(s: Situation) -> str | None:
+    if s.job.charge.controller not in ("series", "mppt"):
+        return None
+    place = (
+        "Never put the diode between controller and battery, where it falsifies the battery voltage that the "
+        "controller sees."
+    )
+    if s.job.charge.blocks_at_night == "no":
+        return place
+    return f"Many controllers of this family block by themselves: read the manual. {place}"
+
+
 def _headroom(s: Situation) -> str | None:
     check = s.choice_check("headroom")
     if check is None or check.margin_frac is None or check.margin_frac >= 0:
@@ -222,21 +234,14 @@ RULES: Sequence[tuple[str, str, str, Say]] = (
         "Parallel packages do not share",
         "negative VF slope, arithmetic",
         _when(
-            lambda s: s.fits_part and (s.job.array.strings > 1 or s.job.legs == "both"),
+            lambda s: (
+                s.fits_part and (s.job.legs == "both" or (s.job.array.strings > 1 and s.job.placement == "array"))
+            ),
             "The warmer of two diodes takes more of the current: use one chip per string, or one larger part. Only the "
             "two dies of one package share a temperature.",
         ),
     ),
-    (
-        "controller_check",
-        "Ask the controller first",
-        "kit maker's sheet, read",
-        _when(
-            lambda s: s.job.charge.controller in ("series", "mppt"),
-            "Many controllers of this family block by themselves: read the manual. Never put the diode between "
-            "controller and battery, where it falsifies the battery voltage that the controller sees.",
-        ),
-    ),
+    ("controller_check", "Ask the controller first", "kit maker's sheet, read", _controller),
     (
         "lithium_cold",
         "No charge below freezing",

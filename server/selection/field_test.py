@@ -2,7 +2,7 @@
 
 import numpy as np
 
-from server.physics.diode import DiodeCells, forward_drop_v, reverse_a
+from server.physics.diode import ActiveLaw, DiodeCells, forward_drop_v, reverse_a
 from server.selection.figures import figure
 from server.selection.job import Job
 from server.selection.result import Candidate, DropReading, FieldTest, NightWindow, SiteFacts
@@ -25,9 +25,10 @@ def field_test(job: Job, facts: SiteFacts, choice: Candidate, none: Candidate) -
     pass_below = trap_v = None
     if choice.part is not None:
         sound = [x / strings for x in (*choice.dark_typical.night_a, *choice.dark_maximum.night_a)]
-        night.append(NightWindow("as designed", "designed", min(sound), max(sound), "charges; the body warms"))
+        most = max(sound) + _supply_a(choice)
+        night.append(NightWindow("as designed", "designed", min(sound), most, "charges; the body warms"))
         if not blocked:
-            pass_below = _between(max(sound), bare_low)
+            pass_below = _between(most, bare_low)
             trap_v = _voltmeter_v(job, choice, facts)
         night.append(NightWindow("diode shorted", "shorted", bare_low, bare_high, "charges; 0 V across it; stays cool"))
         night.append(NightWindow("diode reversed", "reversed", bare_low, bare_high, "no charge at all"))
@@ -68,6 +69,15 @@ def _between(sound_a: float, bare_a: float) -> float | None:
     if bare_a <= 0 or sound_a <= 0 or bare_a / sound_a < TELLING_RATIO:
         return None
     return float(np.sqrt(sound_a * bare_a))
+
+
+def _supply_a(choice: Candidate) -> float:
+    """What an active rectifier may take from the bank for itself: in the meter's reading if its supply comes that way.
+
+    A. It stands in the window's upper end only, for the circuit around it decides from which side it is fed.
+    """
+    laws = () if choice.part is None else (choice.part.typical, choice.part.maximum)
+    return max((law.supply_a for law in laws if isinstance(law, ActiveLaw)), default=0.0)
 
 
 def _cells(job: Job, choice: Candidate) -> DiodeCells | None:

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from server.selection.figures import ampere_hours, figure
 from server.selection.job import Job
 from server.selection.ratings import string_protection_needed
-from server.selection.result import Candidate, DarkBand, SiteFacts, Standing, Verdict, VerdictKind
+from server.selection.result import Candidate, Check, DarkBand, SiteFacts, Standing, Verdict, VerdictKind
 
 # Differences below this share of the deciding period's harvest are no difference: they lie under what is knowable of a
 # site, and the cooler part is the better one.
@@ -15,6 +15,12 @@ RESOLUTION_FRAC = 0.002
 NEAR_KNEE_FRAC = 0.3  # above this share of the heat lost to the bank, the words change
 MARGINAL_HANDICAP = 5.0  # so many resolutions must a marginal part be better than a sound one
 NONE_KEY, VALVE_KEY = "none", "perfect-valve"
+
+# What a failed check of the site asks for, whichever part is fitted.
+SITE_DUTIES = {
+    "self_regulated": "First fit a charge regulator: without one this array overcharges the bank.",
+    "string_fuse": "Fuse every string as well.",
+}
 
 TECHNOLOGY_WORDS = {
     "pn_silicon": "silicon diode",
@@ -119,14 +125,16 @@ def verdict(
     candidates: Sequence[Candidate],
     resolution_wh: float,
     rule_winner: str | None,
+    site_checks: Sequence[Check] = (),
 ) -> Verdict:
     """The answer and what it hangs on. `rule_winner`: the best key were 2 × cold Voc asked, None where it is the same.
 
-    `candidates` come in order.
+    `candidates` come in order; `site_checks` that fail ask for something beside the diode, which the sentence says.
     """
     ranked = [item for item in candidates if item.rank is not None]
     by_key = {item.key: item for item in candidates}
     period = facts.deciding_period
+    also = "".join(f" {SITE_DUTIES[c.code]}" for c in site_checks if c.outcome == "fail" and c.code in SITE_DUTIES)
     if not ranked:
         failed = [item for item in candidates if item.standing == "fail"]
         because = tuple(f"{item.title}: {item.reasons[0]}" for item in failed[:5] if item.reasons)
@@ -137,7 +145,7 @@ def verdict(
         )
         return Verdict(
             "nothing_safe",
-            sentence + ".",
+            sentence + "." + also,
             None,
             None,
             because,
@@ -155,10 +163,10 @@ def verdict(
     kind, sentence = _sentence(job, facts, best, none, ranked, resolution_wh)
     return Verdict(
         kind,
-        sentence,
+        sentence + also,
         best.key,
         None if runner is None else runner.key,
-        _because(job, facts, best, runner, none),
+        _because(job, facts, best, runner, none, plain_equal(ranked, best)),
         _would_change(job, best, by_corner, by_key, rule_winner),
         stable and not shaky,
         _stability(best, by_corner, by_key, blocked),
@@ -229,21 +237,44 @@ def _sentence(
     return "fit_part", text + "."
 
 
-def _because(job: Job, facts: SiteFacts, best: Candidate, runner: Candidate | None, none: Candidate) -> tuple[str, ...]:
+def plain_equal(candidates: Sequence[Candidate], choice: Candidate | None) -> Candidate | None:
+    """The first plain diode among the equals of a chosen active rectifier, sound and firm enough to take instead."""
+    if choice is None or choice.technology != "active" or not choice.tied:
+        return None
+    plain = (c for c in candidates if c.tied and c.part is not None and c.technology != "active")
+    return next((c for c in plain if c.standing == choice.standing), None)
+
+
+def _because(
+    job: Job,
+    facts: SiteFacts,
+    best: Candidate,
+    runner: Candidate | None,
+    none: Candidate,
+    plain: Candidate | None,
+) -> tuple[str, ...]:
     period = facts.deciding_period
     month = when(facts)
     harvest = best.typical.delivered_wh[period]
     lines = []
     lines += _ledgers_in_words(job, best, period)
+    if plain is not None and plain is not runner:
+        lines.append(
+            f"{plain.title} is as good within {100 * RESOLUTION_FRAC:g} % of the harvest, and a plain diode: the "
+            "simpler one to buy and fit"
+        )
     if runner is not None:
         gap = best.typical.net_wh[period] - runner.typical.net_wh[period]
         share = 100 * gap / harvest if harvest > 0 else 0.0
         if best.standing != runner.standing:
             lines.append(f"runner-up is {runner.title}, which is {_standing_words(runner)}")
         elif best.tied and runner.tied:
+            edge = "no diode has nothing to fail" if best.key == NONE_KEY else f"{best.title} runs cooler"
+            if plain is runner:
+                edge += f"; {runner.title} is a plain diode, the simpler one to buy and fit"
             lines.append(
                 f"runner-up is {runner.title}: within {100 * RESOLUTION_FRAC:g} % of the harvest they are equal, and "
-                f"{best.title} runs cooler"
+                f"{edge}"
             )
         else:
             lines.append(f"runner-up is {runner.title}, {gap:.2f} Wh a day ({share:.2f} %) behind {month}")
@@ -294,7 +325,8 @@ def _would_change(
     charge = job.charge
     if charge.blocks_at_night == "unknown" and best.key != NONE_KEY and charge.controller != "shunt":
         lines.append(
-            "if the controller blocks at night by itself, fit none: read its manual, or take one night reading"
+            "if the controller blocks at night by itself, fit none: read its manual, or well after dark put a "
+            "milliammeter in the panel lead; next to nothing there means that it blocks"
         )
     if charge.blocks_at_night == "yes" and best.key == NONE_KEY:
         lines.append(

@@ -238,4 +238,6 @@ def site_assumptions(job: Job, site: Site) -> tuple[Assumption, ...]:
             rows.append(Assumption("azimuth_deg", f"{site.plane.azimuth_deg:.0f}°", "towards the equator"))
         if job.climate.altitude_m is None:
             rows.append(Assumption("altitude_m", f"{site.altitude_m:.0f} m", "place or packaged altitude table"))
+    if job.heat.box in ("light_box", "dark_box") and job.heat.box_area_m2 is None:
+        rows.append(Assumption("box_area_m2", "not given", "what the diodes add to their box's warmth is not counted"))
     return tuple(rows)

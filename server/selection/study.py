@@ -36,10 +36,10 @@ def run(job: Job) -> Study:
     resolution_wh = resolution(solved.ledgers[table.valve], facts)
     candidates = ranked(job, candidates, facts.deciding_period, resolution_wh)
     rule_winner = under_double_rule(job, worst, candidates, facts, resolution_wh)
-    answer = verdict(job, facts, candidates, resolution_wh, rule_winner)
+    site_wide = ratings.site_checks(job)
+    answer = verdict(job, facts, candidates, resolution_wh, rule_winner, site_wide)
     choice = next((item for item in candidates if item.key == answer.choice), None)
     none = next(item for item in candidates if item.key == NONE_KEY)
-    site_wide = ratings.site_checks(job)
     assumptions = tuple(Assumption(*row) for row in job.assumptions) + site_assumptions(job, site)
     if choice is not None and choice.part is not None:
         assumptions += tuple(Assumption("part", choice.title, text) for text in choice.part.assumed)

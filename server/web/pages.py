@@ -11,6 +11,7 @@ from server.errors import InputError, Overloaded
 from server.paths import asset_dir
 from server.physics import thermal
 from server.selection import faults, field_test, heating, ratings
+from server.selection.ranking import plain_equal
 from server.selection.result import Candidate
 from server.web import charts, form, refusals
 from server.web.api import desk_of
@@ -52,6 +53,8 @@ class ResultView:
     day: charts.Day
     sink_to_buy_c_per_w: float | None
     """The choice's catalogue figure for a heatsink, where it is told apart from the one that is needed."""
+    plain_equal: Candidate | None
+    """A plain diode as good as the active rectifier that is chosen."""
     bare_tab: bool
     """Even the largest resistance that counts as a heatsink is cool enough."""
     needed_v: float | None
@@ -91,6 +94,7 @@ class ResultView:
             ),
             day=charts.day(study.day, with_diode=choice is not None and choice.part is not None),
             sink_to_buy_c_per_w=_sink_to_buy(choice),
+            plain_equal=plain_equal(study.candidates, choice),
             bare_tab=_bare_tab(choice),
             needed_v=_most(choice, "reverse_stress", "rule_voltage"),
             needed_a=_most(choice, "current"),

@@ -527,6 +527,12 @@ class JobIn(Strict):
                 source = "monthly"
             elif self.preset is not None:
                 source = "preset"
+                for name in ("lat_deg", "lon_deg"):
+                    if getattr(self, name) is not None:
+                        raise InputError(
+                            name,
+                            f"{getattr(self, name):g} is given and the place {self.preset!r} too; clear one of them",
+                        )
             elif self.lat_deg is not None or self.lon_deg is not None:
                 source = "grid"
             else:

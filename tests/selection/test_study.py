@@ -265,7 +265,7 @@ CAUTIONS = [
     ("polarity", JETTY, CABIN),
     ("hot_case", JETTY, CABIN),
     ("junction_box", launch(box="junction_box", rth_c_per_w=5), JETTY),
-    ("parallel", launch(strings=2), JETTY),
+    ("parallel", launch(strings=2, placement="array"), launch(strings=2)),
     ("controller_check", CABIN, JETTY),
     ("lithium_cold", CABIN, JETTY),
     ("headroom", skiff(13.8, 35.0), JETTY),
