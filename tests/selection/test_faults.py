@@ -59,6 +59,16 @@ def test_three_strings_push_three_times_isc_max_into_the_fourth():
     assert shorted.outcome == "pass"
 
 
+def test_an_active_rectifiers_own_supply_lies_within_what_a_sound_one_may_read():
+    found = answer(launch(controller="series", blocks_at_night="no", candidates=["LM74700-Q1 + IRFP4310Z"]))
+    part = found.candidate(found.verdict.choice).part
+    designed = found.field_test.night[0]
+    assert part.maximum.supply_a == pytest.approx(130e-6)  # LM74700-Q1 data sheet, operating quiescent current, maximum
+    assert (
+        designed.low_a < part.typical.supply_a < part.maximum.supply_a < designed.high_a < found.field_test.pass_below_a
+    )
+
+
 def test_without_diodes_the_same_fault_exceeds_the_modules_fuse():
     found = answer(cabin(strings=3, max_series_fuse_a=15))
     assert found.verdict.choice == "none"

@@ -8,7 +8,7 @@ from worked_jobs import cabin, launch, skiff
 from server.errors import InputError
 from server.selection import study
 from server.selection.heating import derated_current_a
-from server.selection.ranking import Entry, order
+from server.selection.ranking import Entry, order, plain_equal
 from server.web.schemas import JobIn
 
 YEAR = {
@@ -288,6 +288,41 @@ def test_every_job_is_told_of_arcs_batteries_and_the_law(job):
     assert "battery_fault_current" in codes
     assert codes[-1] == "law"
     assert [c.rank for c in said] == list(range(1, len(said) + 1))
+
+
+# --- what else the site needs, and the simpler part -------------------------------------------------------------------
+
+
+def test_the_verdict_asks_for_a_regulator_where_the_array_would_overcharge_the_bank():
+    weak, strong = answer(YEAR, controller="direct", battery_ah=1000), answer(YEAR, controller="direct")
+    assert "charge regulator" in strong.verdict.sentence  # 1.25 × 5.9 A against 3 % of 100 Ah
+    assert "charge regulator" not in weak.verdict.sentence  # 7.4 A against 30 A
+
+
+def test_the_verdict_asks_for_string_fuses_where_the_neighbours_feed_too_much():
+    fused, safe = cabin(strings=4, max_series_fuse_a=15), cabin(strings=2, max_series_fuse_a=15)
+    assert "Fuse every string" in answer(fused).verdict.sentence
+    assert "Fuse every string" not in answer(safe).verdict.sentence
+
+
+def test_a_plain_diode_as_good_as_an_active_rectifier_is_named(year):
+    chosen = year.candidate(year.verdict.choice)
+    assert chosen.technology == "active"
+    plain = plain_equal(year.candidates, chosen)
+    assert plain.technology != "active"
+    assert plain.tied
+    assert any(plain.title in line and "plain diode" in line for line in year.verdict.because)
+    assert plain_equal(year.candidates, plain) is None
+
+
+def test_a_controller_that_is_known_to_let_back_is_not_to_be_asked():
+    def said(blocks):
+        found = answer(YEAR, blocks_at_night=blocks).cautions
+        return next(c.sentence for c in found if c.code == "controller_check")
+
+    assert "read the manual" in said("unknown")
+    assert "read the manual" not in said("no")
+    assert "Never put the diode between" in said("no")
 
 
 # --- refusals ---------------------------------------------------------------------------------------------------------

@@ -99,6 +99,20 @@ def test_a_job_is_asked_refused_corrected_and_answered_by_keyboard(visit):
     assert parse_qs(urlsplit(page.url).query)["battery_ah"] == ["80,5"]
 
 
+def test_going_back_finds_every_field_as_it_was_left(visit):
+    page = visit.page
+    page.goto(f"{visit.site}/")
+    visit.retype("module_voc_v", "21.9")
+    page.select_option("#preset", "seville")
+    page.click("form.job button[type=submit] >> nth=0")
+    page.wait_for_url("**/job?**")
+    page.go_back()
+    page.wait_for_load_state()
+    assert page.input_value("#module_voc_v") == "21.9"
+    assert page.input_value("#preset") == "seville"
+    assert page.text_content("form.job button[type=submit] >> nth=0") == "Decide"
+
+
 def test_links_under_the_verdict_reach_their_sections(visit):
     page = visit.page
     page.goto(visit.site + "/")

@@ -23,6 +23,8 @@ BAD = [
     ({"chemistry": "wet"}, "chemistry", ["wet", "flooded"]),
     ({"candidates": "10SQ05O"}, "candidates", ["10SQ05O", "10SQ050"]),
     ({"climate": "grid", "lat_deg": "95", "lon_deg": "0"}, "lat_deg", ["95", "-90", "90"]),
+    ({"peak_sun_h": None, "preset": "london", "lat_deg": "-20", "lon_deg": "0"}, "lat_deg", ["-20", "london", "clear"]),
+    ({"module_voc_v": "44.8", "module_vmp_v": "37", "cells": "36"}, "cells", ["36", "44.8", "56 to 179"]),
     ({"peak_sun_h": None, "preset": "atlantis"}, "preset", ["atlantis", "london"]),
     ({"peak_sun_h": "40"}, "peak_sun_h", ["40", "daylight"]),
     ({"own_diodes": "[{"}, "own_diodes", ["JSON"]),
