@@ -54,7 +54,7 @@ def tracked_block(field: Field, _before: FloatArray | None, part: slice) -> Solv
             high = np.where(value >= 0, y, high)
             with np.errstate(divide="ignore", invalid="ignore"):
                 trial = y - value / slope
-            outside = ~((trial > low) & (trial < high))
+            outside = ~((trial >= low) & (trial <= high))  # a step too small to leave a bound is the root, not a miss
             trial = np.where(outside, 0.5 * (low + high), trial)
             settled = np.abs(trial - y) < 1e-9 * np.maximum(y, 1e-3)
             y = trial

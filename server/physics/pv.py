@@ -407,7 +407,7 @@ class StringCells:
             low, high = np.where(value <= 0, y, low), np.where(value >= 0, y, high)
             with np.errstate(divide="ignore", invalid="ignore"):
                 trial = y - value / slope
-            trial = np.where((trial > low) & (trial < high), trial, 0.5 * (low + high))
+            trial = np.where((trial >= low) & (trial <= high), trial, 0.5 * (low + high))
             moved = np.abs(trial - y)
             y = trial
             if np.all(moved <= 1e-12 * (1.0 + y)):
