@@ -22,4 +22,4 @@ def milli(value_a: float) -> str:
 
 def ampere_hours(value_ah: float) -> str:
     """An amount of charge in Ah, or mAh where that reads better."""
-    return f"{value_ah:.2f} Ah" if abs(value_ah) >= 0.0995 else f"{figure(1e3 * value_ah)} mAh"
+    return f"{value_ah:.2f} Ah" if abs(value_ah) >= 0.9995 else f"{figure(1e3 * value_ah)} mAh"

@@ -24,7 +24,8 @@ def test_a_current_is_in_the_unit_a_meter_shows(amps, text):
 
 
 @pytest.mark.parametrize(
-    ("charge", "text"), [(0.18, "0.18 Ah"), (0.0038, "3.8 mAh"), (0.000094, "0.094 mAh"), (0.0, "0 mAh")]
+    ("charge", "text"),
+    [(1.8, "1.80 Ah"), (0.18, "180 mAh"), (0.0038, "3.8 mAh"), (0.000094, "0.094 mAh"), (0.0, "0 mAh")],
 )
 def test_a_charge_is_in_ah_or_mah(charge, text):
     assert ampere_hours(charge) == text

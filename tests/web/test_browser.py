@@ -24,12 +24,17 @@ class Visit:
         self.page.on("console", self._said)
         self.page.on("pageerror", lambda error: self.trouble.append(f"script: {error}"))
         self.page.on("request", self._asked)
-        self.page.on("requestfailed", lambda asked: self.trouble.append(f"failed: {asked.url}"))
+        self.page.on("requestfailed", self._failed)
 
     def _said(self, said):
         # Chromium reports an answer of 422 as an error of loading; that refusal is what the test asks for.
         if said.type in ("error", "warning") and "status of 422" not in said.text:
             self.trouble.append(f"console: {said.text}")
+
+    def _failed(self, asked):
+        # Who leaves a page early cuts its last requests off: that is no failure of the site.
+        if asked.failure != "net::ERR_ABORTED":
+            self.trouble.append(f"failed: {asked.url} {asked.failure}")
 
     def _asked(self, asked):
         if not asked.url.startswith((self.site, "data:")):
