@@ -48,6 +48,22 @@ async def test_the_first_page_holds_the_worked_example_and_its_verdict(client):
     assert 'action="/job" method="get"' in page.text
 
 
+@pytest.mark.parametrize(
+    ("change", "careful", "kicker"),
+    [
+        ({"controller": "series", "blocks_at_night": "unknown"}, True, "Ask the controller first"),
+        ({"controller": "series", "blocks_at_night": "no"}, False, "Fit a diode"),
+        ({"controller": "direct", "battery_ah": "10"}, True, "Fit a diode"),  # 3 % of 10 Ah is 0.3 A
+        ({"controller": "direct", "battery_ah": "1000"}, False, "Fit a diode"),
+    ],
+)
+async def test_a_verdict_with_something_to_do_first_is_set_apart(client, query, change, careful, kicker):
+    text = (await client.get("/job", params={**query, **change})).text
+    panel = re.search(r'<section class="verdict ([^"]+)"[^>]*>\s*<p class="kicker">([^<]+)', text)
+    assert panel.group(2) == kicker
+    assert ("with-care" in panel.group(1)) == careful
+
+
 async def test_every_field_of_the_job_is_in_the_form_once(client):
     names = [field.name for group in OPEN_GROUPS + FOLDED_GROUPS for field in group.fields]
     assert sorted(names) == sorted(JobIn.model_fields)
